@@ -30,7 +30,6 @@ type Act struct {
 // pending is what a transaction has yet to write.
 type pending struct {
 	acts []written
-	held bool
 }
 
 type written struct {
@@ -214,3 +213,9 @@ func chain(previous, body []byte) []byte {
 	sum.Write(body)
 	return sum.Sum(nil)
 }
+
+// Mark returns where the acts gathered so far end, for Rewind.
+func Mark(s domain.Scope) int { return len(gather(s).acts) }
+
+// Rewind forgets the acts gathered since mark: what they told was rolled back.
+func Rewind(s domain.Scope, mark int) { p := gather(s); p.acts = p.acts[:mark] }

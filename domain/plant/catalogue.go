@@ -188,6 +188,10 @@ func UpdateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 	}
 	was := P(&before).CatalogueHead()
 	h.CreatedAt, h.UpdatedAt, h.RetiredAt = was.CreatedAt, s.At, was.RetiredAt
+	if m, ok := any(row).(interface{ Head() *ModelHead }); ok {
+		old := any(P(&before)).(interface{ Head() *ModelHead }).Head()
+		m.Head().Provisional, m.Head().MergedInto = old.Provisional, old.MergedInto
+	}
 	if err := row.Validate(); err != nil {
 		return err
 	}
