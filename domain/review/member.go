@@ -227,11 +227,9 @@ func (b *builder) service(g *loading.LampGroup, p *plant.Fixture, at *time.Time,
 		hours = 0
 	}
 	g.HoursFitted = &hours
-	if hours <= retrofit.ProvenHours && g.Model != nil && (g.Model.Technology == loading.LEDLamp || g.Model.Technology == "") {
-		left := (retrofit.ProvenHours - hours) * hoursAYear / *yearly
-		if left < 50*hoursAYear {
-			t.sooner(b.at.Add(time.Duration(left*float64(time.Hour))+time.Hour), b.at)
-		}
+	if hours <= retrofit.ProvenHours && g.Model != nil && g.Model.Technology == loading.LEDLamp && *yearly > 1 {
+		// Told from the day of fitting, so that looking again does not move it.
+		t.sooner(at.Add(time.Duration(retrofit.ProvenHours*hoursAYear / *yearly * float64(time.Hour))+time.Hour), b.at)
 	}
 }
 
