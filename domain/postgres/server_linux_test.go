@@ -12,7 +12,7 @@ import (
 
 func TestServerRunsUnprivileged(t *testing.T) {
 	t.Parallel()
-	s := start(t, Options{Dir: folder(t)})
+	s := start(t, Options{Dir: ready(t)})
 	info, err := os.Stat(fmt.Sprintf("/proc/%d", s.PID()))
 	if err != nil {
 		t.Fatal(err)
@@ -50,7 +50,7 @@ func TestServerRunsUnprivileged(t *testing.T) {
 
 func TestKilledProgramLeavesNoProcess(t *testing.T) {
 	t.Parallel()
-	dir := folder(t)
+	dir := ready(t)
 	program, pid, url := hold(t, dir)
 	connect(t, url)
 	if err := program.Process.Kill(); err != nil {

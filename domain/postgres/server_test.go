@@ -13,6 +13,7 @@ import (
 	"path/filepath"
 	"strconv"
 	"strings"
+	"sync"
 	"testing"
 	"time"
 
@@ -38,7 +39,15 @@ func TestMain(m *testing.M) {
 		}
 		os.Exit(0)
 	}
-	os.Exit(m.Run())
+	code := m.Run()
+	if dir, err := initialised(); err != nil {
+		fmt.Fprintln(os.Stderr, err)
+		code = 1
+	} else if err := os.RemoveAll(dir); err != nil {
+		fmt.Fprintln(os.Stderr, err)
+		code = 1
+	}
+	os.Exit(code)
 }
 
 // folder returns a folder for a server. That of testing.T is closed to other accounts than its own, and for root the
@@ -58,6 +67,33 @@ func folder(t testing.TB) string {
 		t.Fatal(err)
 	}
 	return filepath.Join(dir, "db")
+}
+
+// initialised makes one server folder for the copies that ready hands out.
+var initialised = sync.OnceValues(func() (string, error) {
+	dir, err := os.MkdirTemp("", "lampward-postgres-")
+	if err != nil {
+		return "", err
+	}
+	s, err := Start(context.Background(), Options{Dir: dir, NoFsync: true})
+	if err != nil {
+		return dir, err
+	}
+	return dir, s.Close()
+})
+
+// ready returns a folder whose data is initialised already, which saves the test most of its time.
+func ready(t testing.TB) string {
+	t.Helper()
+	from, err := initialised()
+	if err != nil {
+		t.Fatal(err)
+	}
+	to := folder(t)
+	if out, err := exec.Command("cp", "-a", from, to).CombinedOutput(); err != nil {
+		t.Fatalf("%v\n%s", err, out)
+	}
+	return to
 }
 
 // start runs a server on the folder for the rest of the test.
@@ -232,7 +268,7 @@ func hold(t *testing.T, dir string) (program *exec.Cmd, pid int, url string) {
 
 func TestKilledProgramIsTakenOver(t *testing.T) {
 	t.Parallel()
-	dir := folder(t)
+	dir := ready(t)
 	program, pid, url := hold(t, dir)
 	exec1(t, url, `CREATE TABLE kept (n int); INSERT INTO kept VALUES (42)`)
 	// A connection at work, so that the server has a second process to end.
@@ -258,7 +294,7 @@ func TestKilledProgramIsTakenOver(t *testing.T) {
 
 func TestLivingServerOfKilledProgramIsStopped(t *testing.T) {
 	t.Parallel()
-	dir := folder(t)
+	dir := ready(t)
 	s := start(t, Options{Dir: dir})
 	exec1(t, s.URL(), `CREATE TABLE kept (n int); INSERT INTO kept VALUES (42)`)
 	stop(t, s)
@@ -301,14 +337,17 @@ func TestTracesOfKilledServerDoNotHinder(t *testing.T) {
 	} {
 		t.Run(name, func(t *testing.T) {
 			t.Parallel()
-			dir := folder(t)
-			s := start(t, Options{Dir: dir})
-			stop(t, s)
-			path := filepath.Join(s.data, "postmaster.pid")
+			dir := ready(t)
+			data := filepath.Join(dir, "data")
+			path := filepath.Join(data, "postmaster.pid")
 			if err := os.WriteFile(path, []byte(trace), 0o600); err != nil {
 				t.Fatal(err)
 			}
-			if err := s.account.own(path); err != nil {
+			as, err := serverAccount(data)
+			if err == nil {
+				err = as.own(path)
+			}
+			if err != nil {
 				t.Fatal(err)
 			}
 			again := start(t, Options{Dir: dir})
@@ -321,7 +360,7 @@ func TestTracesOfKilledServerDoNotHinder(t *testing.T) {
 
 func TestSecondProgramIsRefused(t *testing.T) {
 	t.Parallel()
-	dir := folder(t)
+	dir := ready(t)
 	program, _, url := hold(t, dir)
 	_, err := Start(t.Context(), Options{Dir: dir})
 	if !errors.Is(err, ErrInUse) {
@@ -358,38 +397,35 @@ func TestFolderIsRefused(t *testing.T) {
 	}
 	tests := []struct {
 		name    string
+		dir     func(testing.TB) string
 		prepare func(t *testing.T, dir string)
 		want    error
 		words   []string
 	}{
-		{"another major version", func(t *testing.T, dir string) {
+		{"another major version", folder, func(t *testing.T, dir string) {
 			write(t, "9\n", dir, "data", "PG_VERSION")
 			unprivileged(t, dir)
 		}, ErrMajor, []string{"PostgreSQL 9", "Install PostgreSQL 9"}},
-		{"data of something else", func(t *testing.T, dir string) {
+		{"data of something else", folder, func(t *testing.T, dir string) {
 			write(t, "x", dir, "data", "letter.txt")
 			unprivileged(t, dir)
 		}, nil, []string{"not a database folder"}},
-		{"other files", func(t *testing.T, dir string) {
+		{"other files", folder, func(t *testing.T, dir string) {
 			write(t, "x", dir, "letter.txt")
 		}, nil, []string{"holds other files"}},
-		{"lost password", func(t *testing.T, dir string) {
-			s := start(t, Options{Dir: dir, NoFsync: true})
-			stop(t, s)
+		{"lost password", ready, func(t *testing.T, dir string) {
 			if err := os.Remove(filepath.Join(dir, "password")); err != nil {
 				t.Fatal(err)
 			}
 		}, nil, []string{"password is missing", "put it back"}},
-		{"wrong password", func(t *testing.T, dir string) {
-			s := start(t, Options{Dir: dir, NoFsync: true})
-			stop(t, s)
+		{"wrong password", ready, func(t *testing.T, dir string) {
 			write(t, "guess\n", dir, "password")
 		}, nil, []string{"is not that of the data"}},
 	}
 	for _, tt := range tests {
 		t.Run(tt.name, func(t *testing.T) {
 			t.Parallel()
-			dir := folder(t)
+			dir := tt.dir(t)
 			tt.prepare(t, dir)
 			s, err := Start(t.Context(), Options{Dir: dir})
 			if err == nil {
@@ -447,7 +483,7 @@ func TestStartEndsWithItsContext(t *testing.T) {
 
 func TestServerThatEndsOnItsOwnIsTold(t *testing.T) {
 	t.Parallel()
-	s, err := Start(t.Context(), Options{Dir: folder(t)})
+	s, err := Start(t.Context(), Options{Dir: ready(t)})
 	if err != nil {
 		t.Fatal(err)
 	}
