@@ -110,15 +110,11 @@ func Hold(ctx context.Context, s domain.Scope) error {
 
 func hold(ctx context.Context, s domain.Scope) (head, error) {
 	var h head
-	row := s.QueryRow(ctx, `
-		SELECT audit_seq, audit_hash, event_seq
-		  FROM building_head
-		 WHERE building_id = $1
-		   FOR NO KEY UPDATE`, s.Building)
+	sql, args := `SELECT audit_seq, audit_hash, event_seq FROM building_head WHERE building_id = $1 FOR NO KEY UPDATE`, []any{s.Building}
 	if s.Building.IsZero() {
-		row = s.QueryRow(ctx, `SELECT audit_seq, audit_hash, event_seq FROM central_head WHERE id = 1 FOR NO KEY UPDATE`)
+		sql, args = `SELECT audit_seq, audit_hash, event_seq FROM central_head WHERE id = 1 FOR NO KEY UPDATE`, nil
 	}
-	err := row.Scan(&h.auditSeq, &h.auditHash, &h.eventSeq)
+	err := s.QueryRow(ctx, sql, args...).Scan(&h.auditSeq, &h.auditHash, &h.eventSeq)
 	return h, domain.Classify(err, "building")
 }
 
