@@ -1,0 +1,4 @@
+package retrofit
+
+// circuitRules judge final circuits against all they feed.
+var circuitRules = []Rule{}

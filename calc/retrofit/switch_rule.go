@@ -1,0 +1,4 @@
+package retrofit
+
+// switchRules judge switches and contacts against what they switch.
+var switchRules = []Rule{}
