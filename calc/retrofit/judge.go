@@ -71,7 +71,12 @@ func (s span) plus(t span) span { return span{s.lo + t.lo, s.hi + t.hi, weaker(s
 func (s span) scaled(k float64) span { return span{s.lo * k, s.hi * k, s.mark} }
 
 // weaker returns the less well founded of two marks.
-func weaker(a, b Mark) Mark { return max(a, b) }
+func weaker(a, b Mark) Mark {
+	if b == "" || a > b {
+		return a
+	}
+	return b
+}
 
 // A judgement is the outcome of a comparison.
 type judgement struct {
