@@ -22,7 +22,11 @@ type Checker struct {
 	dimmer  []dimmerView
 	circuit []circuitView
 	lamps   []lampLoad
-	index   []int32 // backing of the lists below
+	index   []int32 // luminaires by driver
+
+	withList    map[loading.Key]struct{} // lamps for which a list of gear is on record
+	withListOf  uintptr
+	withListLen int
 }
 
 // An ask is a field that one rule misses at one place.
@@ -56,7 +60,7 @@ func (c *Checker) Check(sys *loading.System) Result {
 	for i := range c.driver {
 		v := &c.driver[i]
 		c.askGearOfDriver(v)
-		for _, c.rule = range driverRules {
+		for _, c.rule = range byDriver {
 			c.rule.driver(v)
 		}
 		for _, f := range v.fixtures {
@@ -70,12 +74,12 @@ func (c *Checker) Check(sys *loading.System) Result {
 		}
 	}
 	for i := range c.dimmer {
-		for _, c.rule = range dimmerRules {
+		for _, c.rule = range byDimmer {
 			c.rule.dimmer(&c.dimmer[i])
 		}
 	}
 	for i := range c.circuit {
-		for _, c.rule = range circuitRules {
+		for _, c.rule = range byCircuit {
 			c.rule.circuit(&c.circuit[i])
 		}
 	}
@@ -85,7 +89,7 @@ func (c *Checker) Check(sys *loading.System) Result {
 }
 
 func (c *Checker) checkFixture(v *fixtureView) {
-	for _, c.rule = range fixtureRules {
+	for _, c.rule = range byFixture {
 		c.rule.fixture(v)
 	}
 }
@@ -214,7 +218,9 @@ func (c *Checker) askGearOfFixture(v *fixtureView) {
 		return
 	}
 	a := ask{field: FieldFixtureFeed, about: About{Kind: string(OnFixture), Key: v.f.Key, Index: int(v.link.fixture)}}
-	if v.f.Model != nil {
+	if is(v.m.Discharge) && v.holdsLED() {
+		a.field = FieldFixtureConversion
+	} else if v.f.Model != nil {
 		switch v.m.Gear {
 		case "":
 			a.field, a.about = FieldFittingGear, aboutFitting(v.m)
@@ -353,7 +359,7 @@ func (c *Checker) gatherFixture(i int) {
 		v.m = &noFitting
 	}
 	noDriver := f.Driver < 0 || f.Driver >= len(c.sys.Drivers)
-	v.bare = noDriver && (f.GearNone || v.m.Gear == "none")
+	v.bare = noDriver && (f.GearNone || v.m.Gear == "none" || f.Conversion == "gear_bypassed" || f.Conversion == "gear_removed")
 	v.quiet = noDriver && !v.bare
 	if f.Circuit >= 0 && f.Circuit < len(c.sys.Circuits) {
 		v.link.circuit = int32(f.Circuit)

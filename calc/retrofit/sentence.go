@@ -35,6 +35,17 @@ func amount(s span, unit string) string {
 	return loading.Figure(s.lo) + " to " + quantity(s.hi, unit)
 }
 
+// figures writes a span of counts: "4", "4 to 6", "at least 4".
+func figures(s span) string {
+	switch {
+	case s.exact():
+		return loading.Figure(s.lo)
+	case math.IsInf(s.hi, 1):
+		return "at least " + loading.Figure(s.lo)
+	}
+	return loading.Figure(s.lo) + " to " + loading.Figure(s.hi)
+}
+
 // plural writes a count with its word.
 func plural(n int, one string) string {
 	if n == 1 {
