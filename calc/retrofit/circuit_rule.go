@@ -376,8 +376,8 @@ func circuitOverloaded(v *circuitView) {
 		return
 	}
 	va, w := v.steadyVA()
-	if va.hi == 0 {
-		return
+	if va.lo == 0 {
+		return // nothing on it, or nothing of which more than its gear kind is worth asking
 	}
 	rating, rated := positive(v.c.RatingA)
 	volts, known := v.feedV(v.c)

@@ -180,8 +180,8 @@ func circuitLeakage(v *circuitView) {
 		return
 	}
 	first := v.subject.Index
-	total, units := exactly(0), 0
-	ways := 0
+	total, units, ways := exactly(0), 0, 0
+	concerned := false
 	for i := range v.by.circuit {
 		o := &v.by.circuit[i]
 		if i != first && (v.c.RCD == "" || o.c.RCD != v.c.RCD) {
@@ -191,11 +191,12 @@ func circuitLeakage(v *circuitView) {
 			return // judged there
 		}
 		ways++
-		t, n := o.leakage()
+		t, n, leaks := o.leakage()
 		total, units = total.plus(t), units+n
+		concerned = concerned || leaks
 	}
-	if total.hi == 0 {
-		return
+	if !concerned {
+		return // nothing leaks, or of all that may only the gear kind is worth asking
 	}
 	if v.c.RCD == "" {
 		v.ask(FieldCircuitRCD, v.aboutPlace())
@@ -244,9 +245,9 @@ func (v *circuitView) ratedRCD() (float64, bool) {
 	return 0, false
 }
 
-// leakage sums the standing leakage of a way, mA, and counts the gears that leak. Gear in a class II or III luminaire
-// has no path to leak to; lamps without gear neither.
-func (v *circuitView) leakage() (total span, gears int) {
+// leakage sums the standing leakage of a way, mA, and counts the gears that leak; leaks reports whether gear of a known
+// kind does or may. Gear in a class II or III luminaire has no path to leak to; lamps without gear neither.
+func (v *circuitView) leakage() (total span, gears int, leaks bool) {
 	for _, i := range v.drivers {
 		d := &v.by.driver[i]
 		switch mA, ok := known(d.g.LeakageMA); {
@@ -254,10 +255,12 @@ func (v *circuitView) leakage() (total span, gears int) {
 			total = total.plus(exactly(mA))
 			if mA > 0 {
 				gears++
+				leaks = true
 			}
 		case d.insulated():
 		default:
 			total = total.plus(nothingKnown)
+			leaks = leaks || d.kind != gearUnknown
 		}
 	}
 	for _, i := range v.fixtures {
@@ -265,7 +268,7 @@ func (v *circuitView) leakage() (total span, gears int) {
 			total = total.plus(nothingKnown)
 		}
 	}
-	return total, gears
+	return total, gears, leaks
 }
 
 // insulated reports whether all luminaires on a driver are of class II or III.

@@ -131,9 +131,11 @@ func (v *dimmerView) contactOverloaded(s *dimmerLoad) {
 		}
 	}
 	many := s.leds >= loading.SwitchedGearLimit
-	watts := above(s.ledW, exactly(loading.SwitchedPowerW*(1-tolerance)))
-	if s.leds == 0 || !many && !watts.fails {
-		if s.leds > 0 && watts.open {
+	if s.leds == 0 {
+		return
+	}
+	if few := below(s.ledW, exactly(loading.SwitchedPowerW)); !many && (few.fails || few.open) {
+		if few.open {
 			v.askLoads(s, false)
 		}
 		return
