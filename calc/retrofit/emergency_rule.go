@@ -38,7 +38,7 @@ func emergencyFittingAltered(v *fixtureView) {
 			if l != nil {
 				f.ofLamp(l.model)
 			}
-			f.say("The %s of this emergency luminaire %s not the one it was tested with, and nobody lists the change.", what, v.verb(1, "is", "be"))
+			f.say("The %s of this emergency luminaire %s not the one it was tested with, and nobody lists the change.", what, v.be(1))
 			return
 		}
 	}

@@ -118,12 +118,12 @@ func enclosedFittingLampNotRated(v *fixtureView) {
 			v.ask(FieldFittingEnclosed, aboutFitting(v.m))
 		case isNot(l.model.SuitableEnclosed):
 			f := v.foundLamp(l, High, certain)
-			f.say("%s %s marked against enclosed luminaires, and this one encloses them.", plural(l.count, "lamp"), v.verb(l.count, "is", "be"))
+			f.say("%s %s marked against enclosed luminaires, and this one is enclosed.", plural(l.count, "lamp"), v.be(l.count))
 		default:
 			v.ask(FieldLampEnclosed, aboutLamp(l.model))
 			f := v.foundLamp(l, Medium, certain)
 			f.Blocks = false
-			f.say("%s %s in a luminaire that encloses them; nothing says that they are made for it.", plural(l.count, "lamp"), v.verb(l.count, "sits", "sit"))
+			f.say("%s %s in an enclosed luminaire; nothing says that this lamp is made for that.", plural(l.count, "lamp"), v.verb(l.count, "sits", "sit"))
 		}
 	}
 }

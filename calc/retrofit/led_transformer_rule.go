@@ -128,21 +128,21 @@ func ledOnElectronicTransformer(v *driverView) {
 		if ok, _ := v.listed(l); ok {
 			continue
 		}
-		severity, blocks, why := High, true, "nothing says that they suit high frequency"
+		severity, blocks, why := High, true, "nothing says that this lamp suits high frequency"
 		switch {
 		case isNot(l.model.HighFrequency):
-			why = "they are stated unsuitable for it"
+			why = "this lamp is stated unsuitable for high frequency"
 		case is(l.model.HighFrequency):
-			severity, blocks, why = Low, false, "they are stated suitable for high frequency, but nobody lists the pair"
+			severity, blocks, why = Low, false, "this lamp is stated suitable for high frequency, but nobody lists the pair"
 		case !l.unproven:
-			severity, blocks, why = Medium, false, "nothing says that they suit high frequency, though they have been in service for more than 2,000 h without a recorded failure"
+			severity, blocks, why = Medium, false, "nothing says that this lamp suits high frequency, though it has been in service for more than 2,000 h without a recorded failure"
 		}
 		if l.model.HighFrequency == nil {
 			v.askAt(FieldLampHighFreq, aboutLamp(l.model), severity, blocks)
 		}
 		f := v.foundLamp(l, severity, certain)
 		f.Blocks = blocks
-		f.say("%s %s on %s, which does not list them; %s.", capital(words([]lampLoad{*l}, false)), v.verb(l.count, "hangs", "hang"), v.name(), why)
+		f.say("%s %s on %s, which does not list this lamp; %s.", capital(words([]lampLoad{*l}, false)), v.verb(l.count, "hangs", "hang"), v.name(), why)
 		v.burstSteps(f)
 	}
 }

@@ -216,7 +216,7 @@ func moduleOvercurrent(v *driverView) {
 		}
 		f := v.foundLamp(l, severity, j)
 		f.say("%s %s %s through each string; %s %s rated for at most %s.", capital(v.name()), v.verb(1, "sends", "send"),
-			amount(each, "mA"), plural(l.count, "module"), v.verb(l.count, "is", "are"), quantity(limit, "mA"))
+			amount(each, "mA"), plural(l.count, "module"), v.be(l.count), quantity(limit, "mA"))
 		f.Steps = loading.StringCurrentSteps(mA.lo, 100*(tol.lo-1), int(min(fewest.hi, 1e6)), limit, "current of one string against the module's maximum", v.by.rule.Basis)
 	}
 }

@@ -134,6 +134,17 @@ func (v *view) verb(n int, one, many string) string {
 	return many
 }
 
+// be is "is", "are" or "would be".
+func (v *view) be(n int) string {
+	switch {
+	case v.proposed:
+		return "would be"
+	case n == 1:
+		return "is"
+	}
+	return "are"
+}
+
 // name is how a sentence calls a driver: "this 105 W electronic transformer".
 func (v *driverView) name() string {
 	if w, ok := positive(v.g.MaxLoadW); ok && v.kind != constantCurrent {
