@@ -98,7 +98,6 @@ func (v *view) feedV(c *loading.Circuit) (float64, bool) {
 type inputRange struct {
 	low, high       float64 // V; high is infinite and low 0 where that end is not stated
 	complete        bool
-	what            string // name in a sentence
 	lowHz, highHz   float64
 	hasLow, hasHigh bool
 }
@@ -107,7 +106,7 @@ func gearOutsideInputRange(v *driverView) {
 	if v.kind == gearUnknown {
 		return
 	}
-	r := inputRange{high: math.Inf(1), what: v.name()}
+	r := inputRange{high: math.Inf(1)}
 	low, hasLow := positive(v.g.InputMinV)
 	high, hasHigh := positive(v.g.InputMaxV)
 	r.hasLow, r.hasHigh = hasLow, hasHigh
@@ -136,7 +135,7 @@ func gearOutsideInputRange(v *driverView) {
 		return
 	}
 	f := v.found(severityOfSupply(&r, volts), judgement{fails: true, sure: Recorded, excess: excessOfSupply(&r, volts)})
-	v.saySupply(f, &r, volts, side)
+	v.saySupply(f, v.name(), &r, volts, side)
 }
 
 func lampOutsideInputRange(v *fixtureView) {
@@ -156,7 +155,7 @@ func lampOutsideInputRange(v *fixtureView) {
 			}
 			continue
 		}
-		r := inputRange{what: "a lamp for " + quantity(rated, "V"), complete: true, hasLow: true, hasHigh: true}
+		r := inputRange{complete: true, hasLow: true, hasHigh: true}
 		low, high, err := loading.InputLimitsV(rated, rated)
 		if err != nil {
 			continue
@@ -173,7 +172,7 @@ func lampOutsideInputRange(v *fixtureView) {
 			continue
 		}
 		f := v.foundLamp(l, severityOfSupply(&r, volts), judgement{fails: true, sure: Recorded, excess: excessOfSupply(&r, volts)})
-		v.saySupply(f, &r, volts, side)
+		v.saySupply(f, "a lamp for "+quantity(rated, "V"), &r, volts, side)
 	}
 }
 
@@ -207,10 +206,10 @@ func excessOfSupply(r *inputRange, volts float64) float64 {
 	return ratio(volts, r.high)
 }
 
-func (v *view) saySupply(f *Finding, r *inputRange, volts float64, side string) {
+func (v *view) saySupply(f *Finding, what string, r *inputRange, volts float64, side string) {
 	if side == "frequency" {
 		hz, _ := positive(v.by.sys.MainsHz)
-		f.say("%s is on a supply of %s, outside its stated %s.", capital(r.what), quantity(hz, "Hz"), hertz(r))
+		f.say("%s is on a supply of %s, outside its stated %s.", capital(what), quantity(hz, "Hz"), hertz(r))
 		f.step("frequency against the input range", quantity(hz, "Hz")+"; stated "+hertz(r), "input marking")
 		return
 	}
@@ -218,7 +217,7 @@ func (v *view) saySupply(f *Finding, r *inputRange, volts float64, side string) 
 	if side == "below" {
 		limit, sign = r.low, " < "
 	}
-	f.say("%s is on a supply of %s; it is good for %s.", capital(r.what), quantity(volts, "V"), voltsWords(r))
+	f.say("%s is on a supply of %s; it is good for %s.", capital(what), quantity(volts, "V"), voltsWords(r))
 	f.step("supply against the input range", quantity(volts, "V")+sign+quantity(limit, "V")+"; "+loading.Figure(volts)+" / "+loading.Figure(limit)+" = "+
 		loading.Percent(volts/limit), f.Basis)
 }

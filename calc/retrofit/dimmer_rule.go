@@ -142,7 +142,7 @@ func dimmerWrongForGear(v *dimmerView) {
 			switch {
 			case x.ask != "":
 				v.ask(x.ask, x.about)
-			case x.answer == No:
+			case x.answer == Incompatible:
 				load := d.name()
 				accepts := acceptsOf(d.g.Dimming).words()
 				if d.kind == magneticTransformer {
@@ -165,7 +165,7 @@ func dimmerWrongForGear(v *dimmerView) {
 			case x.answer == Conditional: // mains_led_on_unmatched_dimmer
 			case x.ask != "":
 				v.ask(x.ask, x.about)
-			case x.answer == No:
+			case x.answer == Incompatible:
 				accepts := "phase-cut dimming"
 				if l.class != filament {
 					accepts = acceptsOf(l.model.Dimming).words()

@@ -7,22 +7,22 @@ import (
 	"lampward/calc/loading"
 )
 
-// An Answer is what the matrix says of a load on a control.
-type Answer string
+// A Compatibility is what the matrix says of a load on a control.
+type Compatibility string
 
-// Answers of the matrix.
+// Compatibilities of the matrix.
 const (
-	OK          Answer = "ok"
-	Conditional Answer = "conditional" // only under the condition of the cell
-	No          Answer = "no"
+	Compatible   Compatibility = "ok"
+	Conditional  Compatibility = "conditional" // only under the condition of the cell
+	Incompatible Compatibility = "no"
 )
 
 // A Cell is one load on one kind of control.
 type Cell struct {
-	Load      string `json:"load"`
-	Control   string `json:"control"`
-	Answer    Answer `json:"answer"`
-	Condition string `json:"condition,omitempty"`
+	Load      string        `json:"load"`
+	Control   string        `json:"control"`
+	Answer    Compatibility `json:"answer"`
+	Condition string        `json:"condition,omitempty"`
 }
 
 // loadRow is a row of the matrix: what hangs on a control.
@@ -127,13 +127,13 @@ var conditionTexts = [...]string{
 
 // cell is an answer with the number of its condition, 0 for none.
 type cell struct {
-	answer    Answer
+	answer    Compatibility
 	condition uint8
 }
 
 var (
-	fits  = cell{answer: OK}
-	never = cell{answer: No}
+	fits  = cell{answer: Compatible}
+	never = cell{answer: Incompatible}
 )
 
 func only(condition uint8) cell { return cell{Conditional, condition} }
@@ -141,7 +141,7 @@ func only(condition uint8) cell { return cell{Conditional, condition} }
 // matrix is the compatibility of each load with each control.
 var matrix = [...][columns]cell{
 	rowFilament:            {fits, fits, fits, fits, never, never, never, fits},
-	rowWound:               {never, {OK, conditionToroid}, never, only(conditionEdge), never, never, never, only(conditionInrush)},
+	rowWound:               {never, {Compatible, conditionToroid}, never, only(conditionEdge), never, never, never, only(conditionInrush)},
 	rowTrailingTransformer: {never, never, fits, only(conditionEdge), never, never, never, fits},
 	rowBothTransformer:     {only(conditionNamesLE), only(conditionNamesLE), fits, only(conditionEdge), never, never, never, fits},
 	rowFixedTransformer:    {never, never, never, never, never, never, never, fits},
@@ -155,7 +155,7 @@ var matrix = [...][columns]cell{
 		never, never, only(conditionDownstream), fits},
 	rowPhaseCurrent: {only(conditionNamesEdge), only(conditionNamesEdge), only(conditionNamesEdge), only(conditionNamesEdge),
 		never, never, never, fits},
-	rowAnalogue:         {never, never, never, never, {OK, conditionRole}, never, never, fits},
+	rowAnalogue:         {never, never, never, never, {Compatible, conditionRole}, never, never, fits},
 	rowDALI:             {never, never, never, never, never, fits, never, fits},
 	rowFixedVoltage:     {never, never, never, never, never, never, only(conditionCurrent), fits},
 	rowFixedFluorescent: {never, never, never, never, never, never, never, only(conditionTwoWire)},
@@ -283,8 +283,8 @@ func (a accepts) words() string {
 
 // A verdict is a cell with its condition worked out as far as the record allows.
 type verdict struct {
-	answer Answer // Conditional: not met by name, and another rule judges it
-	ask    Field  // what decides, if the record does not; empty if it does
+	answer Compatibility // Conditional: not met by name, and another rule judges it
+	ask    Field         // what decides, if the record does not; empty if it does
 	about  About
 }
 
@@ -292,9 +292,9 @@ func asking(f Field, about About) verdict { return verdict{ask: f, about: about}
 
 func verdictOf(good bool) verdict {
 	if good {
-		return verdict{answer: OK}
+		return verdict{answer: Compatible}
 	}
-	return verdict{answer: No}
+	return verdict{answer: Incompatible}
 }
 
 // better returns the verdict that lets more pass: a load that takes two kinds of control is judged by the one it gets.
@@ -303,7 +303,7 @@ func better(a, b verdict) verdict {
 		switch {
 		case v.ask != "":
 			return 1
-		case v.answer == No:
+		case v.answer == Incompatible:
 			return 0
 		case v.answer == Conditional:
 			return 2
@@ -384,7 +384,7 @@ func (v *dimmerView) judgeIn(row loadRow, c controlColumn, l *judgedLoad) verdic
 	case conditionNamedAll:
 		return verdict{answer: Conditional}
 	case conditionInrush, conditionTwoWire, conditionDownstream, conditionRole, conditionCurrent:
-		return verdict{answer: OK} // each has a rule of its own
+		return verdict{answer: Compatible} // each has a rule of its own
 	}
 	return verdict{answer: x.answer}
 }
@@ -393,13 +393,13 @@ func (v *dimmerView) judgeIn(row loadRow, c controlColumn, l *judgedLoad) verdic
 func (v *dimmerView) onToroid(d *driverView) verdict {
 	switch {
 	case is(v.m.Toroids) || isNot(d.g.Toroid):
-		return verdict{answer: OK}
+		return verdict{answer: Compatible}
 	case d.g.Toroid == nil:
 		return asking(FieldGearToroid, aboutGear(d.g))
 	case v.m.Toroids == nil:
 		return asking(FieldDimmerToroids, aboutControl(v.m))
 	}
-	return verdict{answer: No}
+	return verdict{answer: Incompatible}
 }
 
 // onSetEdge judges a universal dimmer by the edge it is set to or has learned; where nobody knows which, by both.
@@ -422,11 +422,11 @@ func (v *dimmerView) onSetEdge(row loadRow, l *judgedLoad) verdict {
 func (v *dimmerView) onNamedEdge(c controlColumn, l *judgedLoad) verdict {
 	switch {
 	case !l.phase():
-		return verdict{answer: No}
+		return verdict{answer: Incompatible}
 	case l.edgeless:
 		return verdict{Conditional, l.field, l.about}
 	case l.leading && l.trailing:
-		return verdict{answer: OK}
+		return verdict{answer: Compatible}
 	}
 	if c == columnUniversal {
 		switch v.d.SetEdge {
@@ -445,7 +445,7 @@ func (v *dimmerView) onNamedEdge(c controlColumn, l *judgedLoad) verdict {
 func (v *dimmerView) onGear(d *driverView) verdict {
 	if d.kind == gearUnknown || d.kind == emergencyPack || switches(v.m) || v.listedGear(d) {
 		// What gear it is, is asked elsewhere; an emergency pack is not on the dimmed side.
-		return verdict{answer: OK}
+		return verdict{answer: Compatible}
 	}
 	l := judgedLoad{accepts: acceptsOf(d.g.Dimming), field: FieldGearDimming, about: aboutGear(d.g), driver: d}
 	if d.kind == magneticTransformer {
@@ -457,51 +457,54 @@ func (v *dimmerView) onGear(d *driverView) verdict {
 	if !l.known {
 		return asking(l.field, l.about)
 	}
-	out := verdict{answer: No}
-	for _, row := range gearRows(d.kind, l.accepts) {
+	out := verdict{answer: Incompatible}
+	rows, n := gearRows(d.kind, l.accepts)
+	for _, row := range rows[:n] {
 		out = better(out, v.judge(row, &l))
 	}
 	return out
 }
 
 // gearRows are the rows that the nameplate of electronic gear or a ballast stands in: one for each kind of control it
-// takes.
-func gearRows(k gearKind, a accepts) []loadRow {
-	var buffer [4]loadRow
-	rows := buffer[:0]
+// takes. The first n of rows count.
+func gearRows(k gearKind, a accepts) (rows [4]loadRow, n int) {
+	add := func(r loadRow) {
+		rows[n] = r
+		n++
+	}
 	switch {
 	case a.nothing && k == electronicTransformer:
-		rows = append(rows, rowFixedTransformer)
+		add(rowFixedTransformer)
 	case a.nothing && k == constantVoltage, a.pwm && k == constantVoltage:
-		rows = append(rows, rowFixedVoltage)
+		add(rowFixedVoltage)
 	case a.nothing:
-		rows = append(rows, rowFixedFluorescent)
+		add(rowFixedFluorescent)
 	}
 	if a.phase() {
 		switch {
 		case k == electronicTransformer && a.trailing && !a.leading:
-			rows = append(rows, rowTrailingTransformer)
+			add(rowTrailingTransformer)
 		case k == electronicTransformer && (a.trailing || a.edgeless):
-			rows = append(rows, rowBothTransformer)
+			add(rowBothTransformer)
 		case k == electronicTransformer, k == constantVoltage:
-			rows = append(rows, rowPhaseVoltage)
+			add(rowPhaseVoltage)
 		default:
-			rows = append(rows, rowPhaseCurrent)
+			add(rowPhaseCurrent)
 		}
 	}
 	if a.analogue0 || a.analogue1 {
-		rows = append(rows, rowAnalogue)
+		add(rowAnalogue)
 	}
 	if a.dali {
-		rows = append(rows, rowDALI)
+		add(rowDALI)
 	}
-	return rows
+	return rows, n
 }
 
 // onLamp is the verdict on mains lamps straight on the dimmer.
 func (v *dimmerView) onLamp(l *lampLoad) verdict {
 	if switches(v.m) || l.model == nil || v.listed(l.model.Key, loading.Key{}, v.sameLamps(l.model)) {
-		return verdict{answer: OK}
+		return verdict{answer: Compatible}
 	}
 	if l.class == classUnknown {
 		return asking(FieldLampTechnology, aboutLamp(l.model))
@@ -517,7 +520,7 @@ func (v *dimmerView) onLamp(l *lampLoad) verdict {
 	case x.nothing:
 		return v.judge(rowFixedFluorescent, &x)
 	case x.signal() && signalKind(v.m), x.pwm && v.m.Kind == loading.PWMDC:
-		return verdict{answer: OK} // control gear of its own inside the lamp
+		return verdict{answer: Compatible} // control gear of its own inside the lamp
 	}
 	return v.judge(rowLED, &x)
 }

@@ -36,9 +36,9 @@ func TestMatrix(t *testing.T) {
 			i++
 			answer, condition := Conditional, want
 			if rest, is := strings.CutPrefix(want, "OK"); is {
-				answer, condition = OK, rest
+				answer, condition = Compatible, rest
 			} else if want == "NO" {
-				answer, condition = No, ""
+				answer, condition = Incompatible, ""
 			}
 			if c.Answer != answer || (c.Condition != "") != (condition != "") {
 				t.Errorf("%s on a %s: %s (%q), printed %s", c.Load, c.Control, c.Answer, c.Condition, want)
@@ -53,7 +53,7 @@ func TestMatrix(t *testing.T) {
 	}
 	// A plain contact never says no.
 	for _, c := range cells {
-		if c.Control == controlNames[columnSwitch] && c.Answer == No {
+		if c.Control == controlNames[columnSwitch] && c.Answer == Incompatible {
 			t.Errorf("%s on a switch says no", c.Load)
 		}
 	}
