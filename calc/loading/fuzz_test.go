@@ -42,7 +42,7 @@ func FuzzNumbers(f *testing.F) {
 		}
 
 		var l Load
-		got("Add", l.Add(n, b, c, c), l.W, l.VALow, l.VAHigh, l.LargestW, l.SmallestW)
+		got("Add", l.Add(n, b, c, c), l.W, l.VALow, l.VAHigh, l.LargestW)
 		got("Add", l.Add(1, d, c, 1), l.W, l.VALow, l.VAHigh)
 		got("AddUnknown", l.AddUnknown(n))
 		check := CheckLoad(l, Window{MinW: &a, MaxW: &b, MaxVA: &d})

@@ -116,7 +116,7 @@ func (v *circuitView) addPulse(s *inrushShare, peakA, widthUS *float64, n int) {
 		return
 	}
 	if limit, err := loading.PulseLimitA(v.c.PulseCurve, width); err == nil {
-		s.share += float64(n) * peak / limit
+		s.share += ratio(float64(n)*peak, limit)
 		if s.show {
 			s.steps = append(s.steps, loading.Step{
 				What: "peaks against the breaker's pulse curve",
@@ -134,7 +134,7 @@ func (v *circuitView) addPulse(s *inrushShare, peakA, widthUS *float64, n int) {
 		return
 	}
 	s.estimate = true
-	s.share += float64(n) * peak / limit
+	s.share += ratio(float64(n)*peak, limit)
 	if s.show {
 		s.steps = append(s.steps, loading.InrushSteps(v.c.Curve, amps, peak, width)...)
 		s.steps = append(s.steps, loading.Step{

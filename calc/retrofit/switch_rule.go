@@ -68,7 +68,7 @@ func noNeutralGlow(v *dimmerView) {
 	f := v.found(Low, certain, s.lamps)
 	f.say("%s has no neutral and switches LED lamps; they can glow or flash when off.", capital(v.name()))
 	volts, hz := 230.0, 50.0
-	if x, ok := v.mainsV(v.circuit); ok {
+	if x, ok := v.feedV(v.circuit); ok {
 		volts = x
 	}
 	if x, ok := positive(v.by.sys.MainsHz); ok {
@@ -116,7 +116,7 @@ func switchUnsuitable(v *dimmerView) {
 
 // contactOverloaded judges what a contact switches against what it states it may.
 func (v *dimmerView) contactOverloaded(s *dimmerLoad) {
-	volts, hasVolts := v.mainsV(v.circuit)
+	volts, hasVolts := v.feedV(v.circuit)
 	amps, leds := v.switchedA(volts)
 	if contact, ok := positive(v.m.ContactA); ok && hasVolts {
 		j := above(amps, exactly(contact))
