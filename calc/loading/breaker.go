@@ -131,7 +131,8 @@ func PulseLimitA(curve []PulsePoint, halfValueUS float64) (float64, error) {
 	for i := 1; i < len(curve); i++ {
 		a, b := curve[i-1], curve[i]
 		if halfValueUS <= b.WidthUS {
-			return a.PeakA + (b.PeakA-a.PeakA)*(halfValueUS-a.WidthUS)/(b.WidthUS-a.WidthUS), nil
+			t := (halfValueUS - a.WidthUS) / (b.WidthUS - a.WidthUS)
+			return (1-t)*a.PeakA + t*b.PeakA, nil
 		}
 	}
 	return 0, ErrOutsideCurve

@@ -8,13 +8,12 @@ const HighLoadShare = 0.80
 // A Load is what lamps together draw from one supply. The zero Load is no lamps; Add and AddUnknown fill it. It
 // holds only sums, so that checking a driver allocates nothing.
 type Load struct {
-	Lamps     int     // count, those of unknown power included
-	Unknown   int     // lamps whose power nobody knows: the sums are then lower bounds
-	W         float64 // sum of nameplate power, W
-	VALow     float64 // sum of power over the highest power factor, VA
-	VAHigh    float64 // sum of power over the lowest power factor, VA
-	LargestW  float64 // power of the largest lamp, W
-	SmallestW float64 // power of the smallest lamp of known power, W
+	Lamps    int     // count, those of unknown power included
+	Unknown  int     // lamps whose power nobody knows: the sums are then lower bounds
+	W        float64 // sum of nameplate power, W
+	VALow    float64 // sum of power over the highest power factor, VA
+	VAHigh   float64 // sum of power over the lowest power factor, VA
+	LargestW float64 // power of the largest lamp, W
 }
 
 // Add puts count lamps of powerW each on the supply. The power factor lies between pfLow and pfHigh; pass the same
@@ -35,9 +34,6 @@ func (l *Load) Add(count int, powerW, pfLow, pfHigh float64) error {
 	}
 	if count == 0 {
 		return nil
-	}
-	if l.Lamps == l.Unknown || powerW < l.SmallestW {
-		l.SmallestW = powerW
 	}
 	l.Lamps += count
 	w := float64(count) * powerW

@@ -74,7 +74,8 @@ func AllowedShare(curve []CurvePoint, airC float64) (float64, error) {
 	for i := 1; i < len(curve); i++ {
 		a, b := curve[i-1], curve[i]
 		if airC <= b.AirC {
-			return (a.SharePct + (b.SharePct-a.SharePct)*(airC-a.AirC)/(b.AirC-a.AirC)) / 100, nil
+			t := (airC - a.AirC) / (b.AirC - a.AirC)
+			return ((1-t)*a.SharePct + t*b.SharePct) / 100, nil
 		}
 	}
 	return last.SharePct / 100, nil

@@ -149,11 +149,8 @@ func fittingOverMaxLampPower(v *fixtureView) {
 			}
 		case !l.known:
 			v.askAt(FieldLampPower, aboutLamp(l.model), severity, true)
-		default:
+		case exceeds(l.watts, limit):
 			j := above(exactly(l.watts), exactly(limit))
-			if !j.fails {
-				continue
-			}
 			f := v.foundLamp(l, severity, j)
 			f.say("%s %s in a luminaire labelled for at most %s a lamp.", capital(words([]lampLoad{*l}, false)), v.verb(l.count, "sits", "sit"), quantity(limit, "W"))
 			f.step("lamp against the label", loading.Figure(l.watts)+" / "+loading.Figure(limit)+" = "+loading.Percent(l.watts/limit), "luminaire label")

@@ -47,7 +47,7 @@ var (
 
 // Ranges returns every plausible range the rules use.
 func Ranges() []Range {
-	return []Range{transformerMinimum, ledPowerFactor, woundRegulation, woundEfficiency, moduleHot, moduleCold, currentTolerance, dimmerLEDShare}
+	return []Range{transformerMinimum, ledPowerFactor, woundRegulation, woundEfficiency, electronicEfficiency, moduleHot, moduleCold, currentTolerance, dimmerLEDShare}
 }
 
 // A span is a number known to lie between two ends. Ends that come from a plausible range carry its mark; ends that
@@ -71,7 +71,12 @@ func (s span) plus(t span) span { return span{s.lo + t.lo, s.hi + t.hi, weaker(s
 func (s span) scaled(k float64) span { return span{s.lo * k, s.hi * k, s.mark} }
 
 // weaker returns the less well founded of two marks.
-func weaker(a, b Mark) Mark { return max(a, b) }
+func weaker(a, b Mark) Mark {
+	if b == "" || a > b {
+		return a
+	}
+	return b
+}
 
 // A judgement is the outcome of a comparison.
 type judgement struct {

@@ -94,22 +94,35 @@ func earthLost(v *fixtureView) {
 	}
 }
 
-// wetZones say what each zone asks for: the second numeral of the IP code, class III, and whether a bath or pool is
+// A wetZone says what a zone asks for: the second numeral of the IP code and class III, and whether a bath or pool is
 // within reach.
-var wetZones = map[string]struct {
+type wetZone struct {
 	water    int
 	classIII bool
 	reach    bool
-}{
-	"damp":    {1, false, false},
-	"wet":     {4, false, false},
-	"outdoor": {3, false, false},
-	"bath_0":  {7, true, true},
-	"bath_1":  {4, false, true},
-	"bath_2":  {4, false, true},
-	"pool_0":  {8, true, true},
-	"pool_1":  {4, false, true},
-	"pool_2":  {2, false, true},
+}
+
+// wetZoneOf returns what a zone asks for; ok is false for a dry or unknown one.
+func wetZoneOf(zone string) (z wetZone, ok bool) {
+	switch zone {
+	case "dry", "":
+		return wetZone{}, false
+	case "damp":
+		return wetZone{water: 1}, true
+	case "wet":
+		return wetZone{water: 4}, true
+	case "outdoor":
+		return wetZone{water: 3}, true
+	case "bath_0":
+		return wetZone{water: 7, classIII: true, reach: true}, true
+	case "bath_1", "bath_2", "pool_1":
+		return wetZone{water: 4, reach: true}, true
+	case "pool_0":
+		return wetZone{water: 8, classIII: true, reach: true}, true
+	case "pool_2":
+		return wetZone{water: 2, reach: true}, true
+	}
+	return wetZone{}, false
 }
 
 // waterNumeral reads the second numeral of an IP code, e.g. 5 of IP65; ok is false where there is none.
@@ -137,7 +150,7 @@ func zoneUnsuitable(v *fixtureView) {
 		}
 		return
 	}
-	zone, ok := wetZones[v.f.Zone]
+	zone, ok := wetZoneOf(v.f.Zone)
 	if !ok {
 		return
 	}
