@@ -51,8 +51,9 @@ type column struct {
 	path []int
 }
 
-// NewTable describes the table name, called what in messages. T is a struct; fields with `json:"-"` or `db:"-"` are
-// not columns. Rows of a table with a building_id column are always asked for by building.
+// NewTable describes the table name, called what in messages. T is a struct; a column is named by the field's `db`
+// tag, else by its JSON name; fields with `db:"-"` or with neither are not columns. Rows of a table with a
+// building_id column are always asked for by building.
 func NewTable[T any](name, what string) *Table[T] {
 	t := &Table[T]{Name: name, What: what, byName: map[string]int{}}
 	t.add(reflect.TypeFor[T](), nil)
@@ -69,7 +70,10 @@ func (t *Table[T]) add(typ reflect.Type, path []int) {
 			t.add(f.Type, at)
 			continue
 		}
-		if name == "-" || name == "" || f.Tag.Get("db") == "-" {
+		if db := f.Tag.Get("db"); db != "" {
+			name = db
+		}
+		if name == "-" || name == "" {
 			continue
 		}
 		if _, ok := t.byName[name]; ok {
