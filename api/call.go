@@ -25,7 +25,7 @@ type call struct {
 	r         *http.Request
 	s         *Server
 	route     *route
-	id        string    // of the request
+	requestID string
 	at        time.Time // one time for all that the request does
 	principal *Principal
 	building  domain.ID // of the path, where the route's scope is building
@@ -54,9 +54,9 @@ func (s *Server) serve(r *route) gin.HandlerFunc {
 	return func(g *gin.Context) {
 		start := time.Now()
 		s.meters.inFlight.Inc()
-		c := &call{gin: g, w: g.Writer, r: g.Request, s: s, route: r, id: requestID(g.Request), at: s.opt.Clock()}
+		c := &call{gin: g, w: g.Writer, r: g.Request, s: s, route: r, requestID: requestID(g.Request), at: s.opt.Clock()}
 		h := g.Writer.Header()
-		h["X-Request-Id"] = []string{c.id}
+		h["X-Request-Id"] = []string{c.requestID}
 		secure(h, g.Request)
 
 		ctx, cancel := g.Request.Context(), context.CancelFunc(func() {})
@@ -109,8 +109,8 @@ func (c *call) answer() (fault error) {
 			fault = &brokenStream{p}
 			return
 		}
-		out := problem(p, c.id)
-		if err := c.write(&out); err != nil {
+		out := problem(p, c.requestID)
+		if err := c.send(&out); err != nil {
 			fault = errors.Join(p, err)
 		}
 	}()
@@ -119,9 +119,9 @@ func (c *call) answer() (fault error) {
 		err = out.encode()
 	}
 	if err != nil {
-		out = problem(err, c.id)
+		out = problem(err, c.requestID)
 	}
-	if werr := c.write(&out); werr != nil {
+	if werr := c.send(&out); werr != nil {
 		return &brokenStream{errors.Join(werr, err)}
 	}
 	return err
@@ -253,7 +253,7 @@ func (c *call) log(status int, took time.Duration, fault error) {
 	}
 	var b [12]slog.Attr
 	attrs := append(b[:0],
-		slog.String("request_id", c.id),
+		slog.String("request_id", c.requestID),
 		slog.String("method", c.r.Method),
 		slog.String("route", c.route.Path),
 		slog.String("path", c.r.URL.Path),

@@ -77,8 +77,8 @@ func secure(h http.Header, r *http.Request) {
 	}
 }
 
-// write sends r as the answer to c. The error is of a stream that broke, after the status was sent.
-func (c *call) write(r *reply) error {
+// send writes r as the answer to c. The error is of a stream that broke, after the status was sent.
+func (c *call) send(r *reply) error {
 	h := c.w.Header()
 	for _, kv := range r.header {
 		h[kv[0]] = []string{kv[1]}
