@@ -59,7 +59,7 @@ func (c *call) takes() (string, error) {
 	return "", r.with("Accept", list)
 }
 
-// noBody refuses a body where the operation takes none; an empty object is let pass, as many clients send one.
+// noBody refuses a body where the operation takes none.
 func (c *call) noBody() error {
 	if c.r.ContentLength == 0 {
 		return nil
@@ -68,7 +68,7 @@ func (c *call) noBody() error {
 	if err != nil {
 		return err
 	}
-	if t := bytes.TrimSpace(body); len(t) > 0 && string(t) != "{}" {
+	if len(bytes.TrimSpace(body)) > 0 {
 		return domain.Invalidf("this operation takes no body")
 	}
 	return nil

@@ -73,7 +73,7 @@ func syntax(data []byte) error {
 // anywhere: it removes the member.
 func inspect(data []byte, s *shape, patch bool) error {
 	w := walker{data: data, patch: patch}
-	w.value(s, false, false)
+	w.value(s, false)
 	if len(w.bad) == 0 {
 		return nil
 	}
@@ -118,13 +118,17 @@ func (w *walker) space() {
 var anyShape = &shape{form: anyForm}
 
 // value checks one value and moves past it.
-func (w *walker) value(s *shape, optional, lines bool) {
+func (w *walker) value(s *shape, lines bool) {
 	w.space()
 	start := w.at
 	switch c := w.data[w.at]; c {
 	case 'n':
 		w.at += len("null")
-		if s.form != anyForm && !optional && !(w.patch && w.depth > 0) {
+		switch {
+		case s.form == anyForm, w.patch && w.depth > 0:
+		case w.depth > 0:
+			w.tell("must be %s, not null; leave it out where nobody knows it", s.want())
+		default:
 			w.tell("must be %s, not null", s.want())
 		}
 	case 't', 'f':
@@ -362,7 +366,7 @@ func (w *walker) object(s *shape) {
 				break
 			}
 			names[name] = true
-			w.value(elem, s.form == anyForm, false)
+			w.value(elem, false)
 		case m == nil:
 			w.tell("is not a field here")
 			w.skip()
@@ -371,7 +375,7 @@ func (w *walker) object(s *shape) {
 			w.skip()
 		default:
 			seen[m.index>>6&3] |= 1 << (m.index & 63)
-			w.value(m.shape, m.optional, m.lines)
+			w.value(m.shape, m.lines)
 		}
 		w.path = w.path[:kept]
 		if !w.more() {
@@ -417,7 +421,7 @@ func (w *walker) list(s *shape, lines bool) {
 			if w.full() {
 				w.skip()
 			} else {
-				w.value(elem, s.form == anyForm, lines)
+				w.value(elem, lines)
 			}
 			w.path = w.path[:kept]
 			n++

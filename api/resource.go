@@ -247,6 +247,9 @@ func (r *resource[T]) change(c *call) (reply, error) {
 	if err != nil {
 		return reply{}, err
 	}
+	if err := checkPatch[T](body); err != nil {
+		return reply{}, err
+	}
 	return r.edit(c, func(before T) (T, error) { return patch(before, body) })
 }
 

@@ -40,10 +40,9 @@ type shape struct {
 
 // member is one field of an object.
 type member struct {
-	shape    *shape
-	index    int  // among the members of its object
-	optional bool // null may stand for absent
-	lines    bool // line feeds and tabs are allowed in its text
+	shape *shape
+	index int  // among the members of its object
+	lines bool // line feeds and tabs are allowed in its text
 }
 
 // prose are the fields that people write in sentences: line feeds and tabs are allowed there, nowhere else.
@@ -130,7 +129,7 @@ func addMembers(s *shape, t reflect.Type) {
 	var embedded []reflect.Type
 	for i := range t.NumField() {
 		f := t.Field(i)
-		name, options, _ := strings.Cut(f.Tag.Get("json"), ",")
+		name, _, _ := strings.Cut(f.Tag.Get("json"), ",")
 		if name == "-" {
 			continue
 		}
@@ -151,12 +150,7 @@ func addMembers(s *shape, t reflect.Type) {
 		if _, outer := s.members[name]; outer {
 			continue
 		}
-		k := f.Type.Kind()
-		s.members[name] = &member{
-			shape:    shapeFor(f.Type),
-			optional: k == reflect.Pointer || k == reflect.Slice || k == reflect.Map || k == reflect.Interface || strings.Contains(options, "omitempty") || strings.Contains(options, "omitzero"),
-			lines:    prose[name],
-		}
+		s.members[name] = &member{shape: shapeFor(f.Type), lines: prose[name]}
 	}
 	for _, e := range embedded {
 		addMembers(s, e)
