@@ -146,6 +146,13 @@ func Exercise(t *testing.T, c *Client, k Kind) string {
 		c.Post(at+"/restore", nil, "If-Match: "+tag).Want(http.StatusPreconditionFailed)
 		c.Post(at+"/restore", map[string]any{"a": 1}).Want(http.StatusUnprocessableEntity)
 		c.Post(at+"/restore", nil, "If-Match: nonsense").Want(http.StatusBadRequest)
+		if k.Unique != "" { // meanwhile another takes its place
+			usurper := clone(k.Body)
+			usurper[k.Unique] = retired.Object()[k.Unique]
+			there := c.Post(k.List, usurper).Want(http.StatusCreated).Header.Get("Location")
+			c.Post(at+"/restore", nil).Want(http.StatusConflict)
+			c.Post(there+"/retire", nil).Want(http.StatusOK)
+		}
 		back := c.Post(at+"/restore", nil).Want(http.StatusOK)
 		if back.Object()["retired_at"] != nil {
 			t.Error("it is still retired")

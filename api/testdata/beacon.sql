@@ -16,9 +16,10 @@ CREATE TABLE beacon (
     built       date,
     permits     text[],
     maker       jsonb,
-    CONSTRAINT beacon_pkey PRIMARY KEY (building_id, id),
-    CONSTRAINT beacon_tag_key UNIQUE (building_id, tag)
+    CONSTRAINT beacon_pkey PRIMARY KEY (building_id, id)
 );
+
+CREATE UNIQUE INDEX beacon_tag_key ON beacon (building_id, tag) WHERE retired_at IS NULL;
 
 CREATE TABLE hue (
     id          uuid NOT NULL,
