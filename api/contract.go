@@ -83,10 +83,36 @@ var assetMedia = []string{"text/css", "text/javascript", "image/png"}
 
 // docsAsset answers GET /docs/{asset}.
 func (s *Server) docsAsset(c *call) (reply, error) {
-	if docsAssets[c.gin.Param("asset")] == "" {
+	media := docsAssets[c.gin.Param("asset")]
+	if media == "" {
 		return reply{}, domain.NotFoundf("the page has no such part")
 	}
-	return reply{serve: s.page.assets, header: [][2]string{{"Cache-Control", "public, max-age=3600"}}}, nil
+	return reply{serve: typed{s.page.assets, media}, header: [][2]string{{"Cache-Control", "public, max-age=3600"}}}, nil
+}
+
+// typed answers as its handler does, with a media type that does not depend on the machine's own table of them.
+type typed struct {
+	http.Handler
+	media string
+}
+
+func (h typed) ServeHTTP(w http.ResponseWriter, r *http.Request) {
+	h.Handler.ServeHTTP(&typedWriter{w, h.media}, r)
+}
+
+type typedWriter struct {
+	http.ResponseWriter
+	media string
+}
+
+func (w *typedWriter) WriteHeader(status int) {
+	w.Header().Set("Content-Type", w.media)
+	w.ResponseWriter.WriteHeader(status)
+}
+
+func (w *typedWriter) Write(b []byte) (int, error) {
+	w.Header().Set("Content-Type", w.media)
+	return w.ResponseWriter.Write(b)
 }
 
 // capture keeps an answer in memory.

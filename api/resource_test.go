@@ -225,5 +225,7 @@ func TestSharedRecords(t *testing.T) {
 	b.Post("/v1/hues", map[string]any{"name": "blue"}).Want(403)
 	b.As("viewer").Get("/v1/hues").Want(200)
 	b.Get("/v1/hues", "Accept: text/csv").Want(200)
+	b.Get("/v1/hues?with_retired=true").Want(422) // they cannot be retired
+	b.Get("/v1/hues?limit=%zz").Want(400)
 	admin.Post("/v1/hues", map[string]any{"name": "x", "building_id": buildingA.String()}).Want(422)
 }
