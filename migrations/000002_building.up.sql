@@ -392,6 +392,7 @@ CREATE TABLE finding (
     lamps                  integer NOT NULL,
     sentence               text NOT NULL,
     steps                  jsonb NOT NULL,
+    excess                 double precision NOT NULL,
     rule_set               integer NOT NULL,
     input_hash             bytea NOT NULL,
     opened_at              timestamptz NOT NULL,
@@ -413,12 +414,14 @@ CREATE TABLE question (
     field                  text NOT NULL,
     about_kind             text NOT NULL,
     about_id               uuid NOT NULL,
+    with_id                uuid NOT NULL,
     rule                   text NOT NULL,
     severity               text NOT NULL,
+    blocks                 boolean NOT NULL,
     places                 integer NOT NULL,
     asked_at               timestamptz NOT NULL,
     CONSTRAINT question_pkey PRIMARY KEY (building_id, id),
-    CONSTRAINT question_about_key UNIQUE (building_id, tree_id, field, about_kind, about_id),
+    CONSTRAINT question_about_key UNIQUE (building_id, tree_id, field, about_kind, about_id, with_id),
     CONSTRAINT question_building_fkey FOREIGN KEY (building_id) REFERENCES building (id)
 );
 

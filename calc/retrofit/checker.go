@@ -22,7 +22,11 @@ type Checker struct {
 	dimmer  []dimmerView
 	circuit []circuitView
 	lamps   []lampLoad
-	index   []int32 // backing of the lists below
+	index   []int32 // luminaires by driver
+
+	withList    map[loading.Key]struct{} // lamps for which a list of gear is on record
+	withListOf  uintptr
+	withListLen int
 }
 
 // An ask is a field that one rule misses at one place.
@@ -56,7 +60,7 @@ func (c *Checker) Check(sys *loading.System) Result {
 	for i := range c.driver {
 		v := &c.driver[i]
 		c.askGearOfDriver(v)
-		for _, c.rule = range driverRules {
+		for _, c.rule = range byDriver {
 			c.rule.driver(v)
 		}
 		for _, f := range v.fixtures {
@@ -70,23 +74,109 @@ func (c *Checker) Check(sys *loading.System) Result {
 		}
 	}
 	for i := range c.dimmer {
-		for _, c.rule = range dimmerRules {
+		for _, c.rule = range byDimmer {
 			c.rule.dimmer(&c.dimmer[i])
 		}
 	}
 	for i := range c.circuit {
-		for _, c.rule = range circuitRules {
+		for _, c.rule = range byCircuit {
 			c.rule.circuit(&c.circuit[i])
 		}
 	}
 	c.hide()
 	c.gatherQuestions()
-	return Result{Findings: c.visible, Questions: c.question, Coverage: c.coverage()}
+	r := Result{Findings: c.visible, Questions: c.question, Coverage: c.coverage()}
+	if sys.Proposal {
+		r.Sum, r.marked = c.sum()
+	}
+	return r
+}
+
+// sum is the load a proposal makes, in one line: that of the driver it loads most, else of the luminaire.
+func (c *Checker) sum() (line string, marked bool) {
+	highest := -1.0
+	for i := range c.driver {
+		v := &c.driver[i]
+		if !v.proposed {
+			continue
+		}
+		marked = true
+		maxW, ok := positive(v.g.MaxLoadW)
+		unit := "W"
+		if !ok {
+			maxW, ok = positive(v.g.MaxLoadVA)
+			unit = "VA"
+		}
+		share := 0.0
+		if ok {
+			share = v.load.w.lo / maxW
+		}
+		if share <= highest {
+			continue
+		}
+		highest = share
+		line = sumOf(v.lamps, false, v.load.w) + " on " + v.name()
+		if ok {
+			line += ", " + loading.Percent(share) + " of " + quantity(maxW, unit)
+		}
+		if w, ok := positive(v.g.MinLoadW); ok {
+			line += ", minimum " + quantity(w, "W")
+		}
+	}
+	for i := range c.fixture {
+		v := &c.fixture[i]
+		if !v.proposed {
+			continue
+		}
+		marked = true
+		if line == "" && v.driver == nil {
+			var s load
+			for j := range v.lamps {
+				s.add(&v.lamps[j])
+			}
+			line = sumOf(v.lamps, false, s.w)
+			if v.bare {
+				line += ", straight on the circuit"
+			}
+		}
+	}
+	for i := range c.dimmer {
+		marked = marked || c.dimmer[i].proposed
+	}
+	return line, marked
 }
 
 func (c *Checker) checkFixture(v *fixtureView) {
-	for _, c.rule = range fixtureRules {
+	c.askLampsOf(v)
+	for _, c.rule = range byFixture {
 		c.rule.fixture(v)
+	}
+}
+
+// askLampsOf asks for what every rule about a lamp waits for: what kind it is and, of a proposed one, its power and the
+// supply it needs.
+func (c *Checker) askLampsOf(v *fixtureView) {
+	c.rule = &rules[0]
+	for i := range v.lamps {
+		l := &v.lamps[i]
+		switch {
+		case l.model == nil:
+			if l.proposed {
+				v.ask(FieldFixtureLamps, v.aboutPlace())
+			}
+			continue
+		case l.class == classUnknown:
+			v.ask(FieldLampTechnology, aboutLamp(l.model))
+		}
+		if !l.proposed {
+			continue
+		}
+		if !l.known {
+			v.ask(FieldLampPower, aboutLamp(l.model))
+		}
+		if v.bare && l.model.Supply == "" {
+			v.ask(FieldLampSupply, aboutLamp(l.model))
+		}
 	}
 }
 
@@ -214,7 +304,9 @@ func (c *Checker) askGearOfFixture(v *fixtureView) {
 		return
 	}
 	a := ask{field: FieldFixtureFeed, about: About{Kind: string(OnFixture), Key: v.f.Key, Index: int(v.link.fixture)}}
-	if v.f.Model != nil {
+	if is(v.m.Discharge) && v.holdsLED() {
+		a.field = FieldFixtureConversion
+	} else if v.f.Model != nil {
 		switch v.m.Gear {
 		case "":
 			a.field, a.about = FieldFittingGear, aboutFitting(v.m)
@@ -327,6 +419,7 @@ func (c *Checker) gather() {
 		if d := s.Fixtures[i].Driver; d >= 0 && d < nd {
 			v.driver = &c.driver[d]
 			v.link.driver = int32(d)
+			v.proposed = v.proposed || v.driver.d.Proposed
 			v.link.circuit = v.driver.link.circuit
 			v.circuit = v.driver.circuit
 			v.quiet = v.driver.quiet
@@ -353,7 +446,7 @@ func (c *Checker) gatherFixture(i int) {
 		v.m = &noFitting
 	}
 	noDriver := f.Driver < 0 || f.Driver >= len(c.sys.Drivers)
-	v.bare = noDriver && (f.GearNone || v.m.Gear == "none")
+	v.bare = noDriver && (f.GearNone || v.m.Gear == "none" || f.Conversion == "gear_bypassed" || f.Conversion == "gear_removed")
 	v.quiet = noDriver && !v.bare
 	if f.Circuit >= 0 && f.Circuit < len(c.sys.Circuits) {
 		v.link.circuit = int32(f.Circuit)
@@ -374,7 +467,7 @@ func (c *Checker) gatherDriver(i int, fixtures []int32) {
 	d := &c.sys.Drivers[i]
 	v := &c.driver[i]
 	*v = driverView{d: d, g: d.Model, kind: kindOf(d.Model), fixtures: fixtures}
-	v.view = view{by: c, level: OnDriver, subject: Subject{OnDriver, i, d.Key}, link: noLinks}
+	v.view = view{by: c, level: OnDriver, subject: Subject{OnDriver, i, d.Key}, link: noLinks, proposed: d.Proposed}
 	v.link.driver = int32(i)
 	if v.g == nil {
 		v.g = &noGear
@@ -468,7 +561,7 @@ func (c *Checker) gatherControls() {
 		d := &s.Dimmers[i]
 		v := &c.dimmer[i]
 		*v = dimmerView{d: d, m: d.Model, members: v.members[:0]}
-		v.view = view{by: c, level: OnDimmer, subject: Subject{OnDimmer, i, d.Key}, link: noLinks}
+		v.view = view{by: c, level: OnDimmer, subject: Subject{OnDimmer, i, d.Key}, link: noLinks, proposed: d.Proposed}
 		v.link.dimmer = int32(i)
 		if v.m == nil {
 			v.m = &noControl
@@ -490,6 +583,7 @@ func (c *Checker) gatherControls() {
 		} else {
 			on = &m.fixture.view
 		}
+		on.proposed = on.proposed || v.d.Proposed
 		v.proposed = v.proposed || on.proposed
 		if on.link.dimmer < 0 && !m.signal() {
 			on.link.dimmer = int32(dimmer)

@@ -433,19 +433,25 @@ func driverHighlyLoaded(v *driverView) {
 	}
 	w := v.load.w
 	if v.kind == constantCurrent {
-		return // its running power is judged by string_over_driver_power
+		mA, ok := v.current()
+		if !ok {
+			return // asked for by string_over_driver_power, which has more at stake
+		}
+		if w, _, _, ok = v.running(mA); !ok {
+			return
+		}
 	}
 	j := above(w, exactly(loading.HighLoadShare*maxW))
-	if j.open {
+	if j.open && v.kind == constantVoltage {
 		v.askLamps()
 	}
 	if !j.fails || above(w, exactly(maxW)).fails {
 		return
 	}
 	f := v.found(Low, byThumb(j.excess))
-	f.say("%s %s %s with %s, %s of its maximum; 80 %% leaves a reserve.", words(v.lamps, false),
-		v.verb(v.load.count, "loads", "load"), v.name(), amount(w, "W"), loading.Percent(w.lo/maxW))
-	f.Steps = loading.LoadSteps(parts(v.lamps, false), 0, maxW, v.by.rule.Basis)
+	f.say("%s %s %s with %s, %s of its maximum %s; 80 %% leaves a reserve.", words(v.lamps, false), v.verb(v.load.count, "loads", "load"), v.name(),
+		amount(w, "W"), loading.Percent(w.lo/maxW), quantity(maxW, "W"))
+	f.step("load against the maximum", loading.Figure(w.lo)+" / "+loading.Figure(maxW)+" = "+loading.Percent(w.lo/maxW), v.by.rule.Basis)
 	if least, err := loading.SmallestDriverW(w.lo, loading.HighLoadShare); err == nil {
 		f.step("smallest driver at 80 %", quantity(w.lo, "W")+" / 0.8 = "+quantity(least, "W"), "common practice, no source")
 	}

@@ -120,6 +120,8 @@ const (
 	FieldCircuitRCDMA      Field = "circuit.rcd_ma"
 	FieldCircuitNeutral    Field = "circuit.neutral"
 	FieldCircuitBattery    Field = "circuit.central_battery"
+	FieldCircuitListed     Field = "circuit.listed_100"
+	FieldWiringRules       Field = "building.wiring_rules"
 	FieldPairing           Field = "pairing.states"
 )
 
@@ -233,6 +235,8 @@ var fieldTexts = map[Field]FieldText{
 	FieldCircuitRCDMA:      {"rcd", "the rated residual current, mA"},
 	FieldCircuitNeutral:    {"neutral", "whether the way has a neutral of its own"},
 	FieldCircuitBattery:    {"supply_kind", "what feeds the circuit when the mains are lost"},
+	FieldCircuitListed:     {"amps", "whether the breaker is listed for 100 % continuous load"},
+	FieldWiringRules:       {"amps", "which wiring rules apply to the building"},
 	FieldPairing:           {"ballast", "whether the tube's maker lists this ballast"},
 }
 

@@ -114,6 +114,9 @@ type Result struct {
 	Findings  []Finding  `json:"findings"`
 	Questions []Question `json:"questions"`
 	Coverage  Coverage   `json:"coverage"`
+	Sum       string     `json:"sum,omitempty"` // of a proposal: the load it makes, in one line
+
+	marked bool // something is marked as proposed
 }
 
 // Weight orders what needs attention: severity times the number affected, everything that can hurt a person

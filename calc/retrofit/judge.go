@@ -47,7 +47,7 @@ var (
 
 // Ranges returns every plausible range the rules use.
 func Ranges() []Range {
-	return []Range{transformerMinimum, ledPowerFactor, woundRegulation, woundEfficiency, moduleHot, moduleCold, currentTolerance, dimmerLEDShare}
+	return []Range{transformerMinimum, ledPowerFactor, woundRegulation, woundEfficiency, electronicEfficiency, moduleHot, moduleCold, currentTolerance, dimmerLEDShare}
 }
 
 // A span is a number known to lie between two ends. Ends that come from a plausible range carry its mark; ends that

@@ -83,16 +83,28 @@ type Rule struct {
 	hides  uint64 // rules hidden, by number
 }
 
-// rules is the table, driverRules and so on the entries that look at one level.
+// rules is the table; byDriver and so on are the entries that look at one level.
 var (
-	rules                                                []Rule
-	driverRules, fixtureRules, dimmerRules, circuitRules []*Rule
+	rules                                    []Rule
+	byDriver, byFixture, byDimmer, byCircuit []*Rule
 )
 
 func init() {
 	rules = slices.Concat(
 		driverLoadRules,
+		outputRules,
+		moduleRules,
+		cableRules,
 		ledTransformerRules,
+		fittingRules,
+		tubeRules,
+		dischargeRules,
+		emergencyRules,
+		protectionRules,
+		failureRules,
+		dimmerRules,
+		switchRules,
+		circuitRules,
 	)
 	if len(rules) > 64 {
 		panic("retrofit: Rule.hides has room for 64 rules")
@@ -110,16 +122,16 @@ func init() {
 			}
 		}
 		if r.driver != nil {
-			driverRules = append(driverRules, r)
+			byDriver = append(byDriver, r)
 		}
 		if r.fixture != nil {
-			fixtureRules = append(fixtureRules, r)
+			byFixture = append(byFixture, r)
 		}
 		if r.dimmer != nil {
-			dimmerRules = append(dimmerRules, r)
+			byDimmer = append(byDimmer, r)
 		}
 		if r.circuit != nil {
-			circuitRules = append(circuitRules, r)
+			byCircuit = append(byCircuit, r)
 		}
 	}
 }

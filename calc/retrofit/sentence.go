@@ -35,6 +35,17 @@ func amount(s span, unit string) string {
 	return loading.Figure(s.lo) + " to " + quantity(s.hi, unit)
 }
 
+// figures writes a span of counts: "4", "4 to 6", "at least 4".
+func figures(s span) string {
+	switch {
+	case s.exact():
+		return loading.Figure(s.lo)
+	case math.IsInf(s.hi, 1):
+		return "at least " + loading.Figure(s.lo)
+	}
+	return loading.Figure(s.lo) + " to " + loading.Figure(s.hi)
+}
+
 // plural writes a count with its word.
 func plural(n int, one string) string {
 	if n == 1 {
@@ -121,6 +132,17 @@ func (v *view) verb(n int, one, many string) string {
 		return one
 	}
 	return many
+}
+
+// be is "is", "are" or "would be".
+func (v *view) be(n int) string {
+	switch {
+	case v.proposed:
+		return "would be"
+	case n == 1:
+		return "is"
+	}
+	return "are"
 }
 
 // name is how a sentence calls a driver: "this 105 W electronic transformer".

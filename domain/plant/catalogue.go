@@ -2,6 +2,7 @@ package plant
 
 import (
 	"context"
+	"slices"
 	"sync/atomic"
 
 	"github.com/jackc/pgx/v5"
@@ -188,6 +189,10 @@ func UpdateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 	}
 	was := P(&before).CatalogueHead()
 	h.CreatedAt, h.UpdatedAt, h.RetiredAt = was.CreatedAt, s.At, was.RetiredAt
+	if m, ok := any(row).(interface{ Head() *ModelHead }); ok {
+		old := any(P(&before)).(interface{ Head() *ModelHead }).Head()
+		m.Head().Provisional, m.Head().MergedInto = old.Provisional, old.MergedInto
+	}
 	if err := row.Validate(); err != nil {
 		return err
 	}
@@ -304,4 +309,71 @@ func ConfirmModel[T any, P interface {
 	}
 	event.Record(s, event.Act{Action: kind + ".confirmed", Kind: kind, ID: id})
 	return row, raise(ctx, s, kind, P(&row))
+}
+
+// Also returns every id under which a model is known, its own and those merged into it, and the id it goes by now.
+func (c *Catalogue) Also(kind string, model domain.ID) (ids []domain.ID, into domain.ID) {
+	switch kind {
+	case KindLamp:
+		return also(c.Lamps, model)
+	case KindDriver:
+		return also(c.Drivers, model)
+	case KindDimmer:
+		return also(c.Dimmers, model)
+	case KindFixture:
+		return also(c.Fixtures, model)
+	}
+	return []domain.ID{model}, model
+}
+
+func also[T any, P interface {
+	*T
+	Head() *ModelHead
+}](models map[domain.ID]P, model domain.ID) ([]domain.ID, domain.ID) {
+	into := model
+	if m := models[model]; m != nil {
+		into = m.Head().ID
+	}
+	ids := []domain.ID{into}
+	for id, m := range models {
+		if id != into && m.Head().ID == into {
+			ids = append(ids, id)
+		}
+	}
+	return ids, into
+}
+
+// FixturesWith returns the fixture models that are, or hold inside, one of the models.
+func (c *Catalogue) FixturesWith(kind string, ids []domain.ID) []domain.ID {
+	if kind == KindFixture {
+		return ids
+	}
+	out := []domain.ID{}
+	if kind != KindDriver {
+		return out
+	}
+	for id, m := range c.Fixtures {
+		if m.DriverModelID != nil && slices.Contains(ids, *m.DriverModelID) {
+			out = append(out, id)
+		}
+	}
+	return out
+}
+
+// Repoint names a model by the id it goes by now wherever the building's places and units still name one that was
+// merged into it. It changes no load: reads follow a merge from the moment it is made.
+func Repoint(ctx context.Context, s domain.Scope, kind string, ids []domain.ID, into domain.ID) error {
+	column, ok := map[string]string{KindLamp: "lamp_model_id", KindDriver: "driver_model_id", KindDimmer: "dimmer_model_id", KindFixture: "fixture_model_id"}[kind]
+	if !ok {
+		return domain.Invalidf("%q is no kind of model", kind)
+	}
+	for _, table := range []string{"place", "unit", "make_up"} {
+		if _, err := s.Exec(ctx, `
+			UPDATE `+table+`
+			   SET `+column+` = $3, version = version + 1, updated_at = $4
+			 WHERE building_id = $1 AND `+column+` = ANY($2) AND `+column+` <> $3`, s.Building, domain.IDs(ids), into, s.At); err != nil {
+			return domain.Classify(err, table)
+		}
+	}
+	return nil
 }

@@ -128,6 +128,9 @@ func insert[T any, P headed[T]](ctx context.Context, e *Edit, t *domain.Table[T]
 	if err := row.Validate(); err != nil {
 		return err
 	}
+	if err := checkReferences(ctx, e.Scope, t.What, row); err != nil {
+		return err
+	}
 	if err := t.Insert(ctx, e.Scope, (*T)(row)); err != nil {
 		return err
 	}
@@ -150,6 +153,9 @@ func update[T any, P headed[T]](ctx context.Context, e *Edit, t *domain.Table[T]
 		return nil, domain.Conflictf("the %s is retired; restore it first", t.What)
 	}
 	if err := row.Validate(); err != nil {
+		return nil, err
+	}
+	if err := checkReferences(ctx, e.Scope, t.What, row); err != nil {
 		return nil, err
 	}
 	if fix != nil {

@@ -29,6 +29,7 @@ type Records struct {
 // SpaceFacts is what a finding may depend on of a space.
 type SpaceFacts struct {
 	YearlyHours *float64
+	Use         string
 }
 
 // An OddLamp is a lamp now fitted that differs from the others of its luminaire.
@@ -128,14 +129,14 @@ func Load(ctx context.Context, s domain.Scope, trees []domain.ID) (*Records, err
 		return err
 	})
 	ask(`
-		SELECT id, yearly_hours
+		SELECT id, yearly_hours, use
 		  FROM space
 		 WHERE building_id = $1
 		   AND id IN (SELECT space_id FROM place WHERE building_id = $1 AND tree_id = ANY($2) AND retired_at IS NULL)`, inTrees, func(rows pgx.Rows) error {
 		for rows.Next() {
 			var id domain.ID
 			var f SpaceFacts
-			if err := rows.Scan(&id, &f.YearlyHours); err != nil {
+			if err := rows.Scan(&id, &f.YearlyHours, &f.Use); err != nil {
 				return err
 			}
 			r.Spaces[id] = f

@@ -7,7 +7,7 @@ import (
 	"time"
 )
 
-// BenchmarkServer measures a stop and a start with fsync on, and reports the first start, which initialises the folder.
+// BenchmarkServer measures a stop and a start, and reports the first start, which initialises the folder.
 func BenchmarkServer(b *testing.B) {
 	dir := folder(b)
 	began := time.Now()
