@@ -34,7 +34,7 @@ type Outcome struct {
 }
 
 // tries is how often a change starts over because it reached further, or because the catalogue moved.
-const tries = 5
+const tries = 8
 
 // Change runs f on the trees that touch names and all it turns out to reach, then judges them anew and stores what is
 // found, in s's transaction: all or nothing. It fails with Invalid where the records would break a rule that always
@@ -45,15 +45,11 @@ func (r *Reviewer) Change(ctx context.Context, s domain.Scope, touch Touch, f fu
 		return Outcome{}, err
 	}
 	for range tries {
-		trees, err = lock(ctx, s, touch, trees)
-		if err != nil {
-			return Outcome{}, err
-		}
 		cat, err := r.Shelf.At(ctx, s)
 		if err != nil {
 			return Outcome{}, err
 		}
-		out, more, moved, err := r.attempt(ctx, s, cat, trees, f)
+		out, more, moved, err := r.attempt(ctx, s, cat, touch, trees, f)
 		if err != nil {
 			return Outcome{}, err
 		}
@@ -62,12 +58,15 @@ func (r *Reviewer) Change(ctx context.Context, s domain.Scope, touch Touch, f fu
 		}
 		trees = union(trees, more)
 	}
-	return Outcome{}, domain.Conflictf("others keep changing the same circuits; try again")
+	return Outcome{}, errContended
 }
 
-// attempt makes the change once inside a savepoint. It returns the trees it lacked, or that the catalogue moved,
-// having rolled back.
-func (r *Reviewer) attempt(ctx context.Context, s domain.Scope, cat *plant.Catalogue, trees []domain.ID, f func(*plant.Edit) error) (out Outcome, more []domain.ID, moved bool, err error) {
+// errContended is told where others keep changing the same trees.
+var errContended = domain.Conflictf("others keep changing the same circuits; try again")
+
+// attempt makes the change once inside a savepoint, its locks included, so that what starts over takes all its locks
+// in their order again. It returns the trees it lacked, or that the catalogue moved, having rolled back.
+func (r *Reviewer) attempt(ctx context.Context, s domain.Scope, cat *plant.Catalogue, touch Touch, trees []domain.ID, f func(*plant.Edit) error) (out Outcome, more []domain.ID, moved bool, err error) {
 	tx := s.Queryer.(pgx.Tx)
 	mark := event.Mark(s)
 	point, err := tx.Begin(ctx)
@@ -81,7 +80,9 @@ func (r *Reviewer) attempt(ctx context.Context, s domain.Scope, cat *plant.Catal
 	inner := s
 	inner.Queryer = point
 	edit := plant.NewEdit(inner, trees)
-	err = f(edit)
+	if err = lock(ctx, inner, touch, trees); err == nil {
+		err = f(edit)
+	}
 	if err == nil && edit.DevicesChanged() {
 		err = alsoBehindDevice(ctx, inner, edit.Trees())
 	}
@@ -137,31 +138,27 @@ func listIDs(ctx context.Context, s domain.Scope, sql string, args ...any) ([]do
 }
 
 // lock holds the trees, in the order of the house: the circuits that stand for a tree, then the places that do. It
-// then resolves the touch again, since trees may have joined while it waited, and goes on until nothing is missing.
-func lock(ctx context.Context, s domain.Scope, t Touch, trees []domain.ID) ([]domain.ID, error) {
-	for range tries {
-		ids := domain.IDs(trees)
-		for _, table := range []string{"circuit", "place"} {
-			if _, err := s.Exec(ctx, `
-				SELECT id
-				  FROM `+table+`
-				 WHERE building_id = $1 AND id = ANY($2)
-				 ORDER BY id
-				   FOR NO KEY UPDATE`, s.Building, ids); err != nil {
-				return nil, domain.Classify(err, "record")
-			}
+// then resolves the touch again, since trees may have joined while it waited, and asks for more where some did.
+func lock(ctx context.Context, s domain.Scope, t Touch, trees []domain.ID) error {
+	ids := domain.IDs(trees)
+	for _, table := range []string{"circuit", "place"} {
+		if _, err := s.Exec(ctx, `
+			SELECT id
+			  FROM `+table+`
+			 WHERE building_id = $1 AND id = ANY($2)
+			 ORDER BY id
+			   FOR NO KEY UPDATE`, s.Building, ids); err != nil {
+			return domain.Classify(err, "record")
 		}
-		now, err := touched(ctx, s, t)
-		if err != nil {
-			return nil, err
-		}
-		all := union(trees, now)
-		if len(all) == len(trees) {
-			return trees, nil
-		}
-		trees = all
 	}
-	return nil, domain.Conflictf("others keep changing the same circuits; try again")
+	now, err := touched(ctx, s, t)
+	if err != nil {
+		return err
+	}
+	if all := union(trees, now); len(all) > len(trees) {
+		return &plant.Grow{Trees: all[len(trees):]}
+	}
+	return nil
 }
 
 // union returns a with those of b it lacks.

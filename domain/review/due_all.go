@@ -15,7 +15,7 @@ import (
 
 // Pending counts reviews that are owed and not yet done: those a change asked for, and those whose time has come.
 func Pending(ctx context.Context, db domain.Queryer, now time.Time) (due, rechecks int, err error) {
-	err = db.QueryRow(ctx, `SELECT (SELECT count(*) FROM review_due), (SELECT count(*) FROM recheck WHERE recheck_at <= $1)`, now).Scan(&due, &rechecks)
+	err = db.QueryRow(ctx, `SELECT (SELECT count(*) FROM review_due), (SELECT count(*) FROM tree WHERE recheck_at <= $1)`, now).Scan(&due, &rechecks)
 	return due, rechecks, domain.Classify(err, "review")
 }
 
@@ -128,7 +128,7 @@ func (r *Reviewer) withModel(ctx context.Context, db *pgxpool.Pool, building dom
 func (r *Reviewer) RecheckDue(ctx context.Context, db *pgxpool.Pool, now func() time.Time, most int) (int, error) {
 	rows, err := db.Query(ctx, `
 		SELECT building_id, tree_id
-		  FROM recheck
+		  FROM tree
 		 WHERE recheck_at <= $1
 		 ORDER BY recheck_at
 		 LIMIT $2`, now(), most)

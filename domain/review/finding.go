@@ -164,11 +164,22 @@ type wanted struct {
 	findings  map[findingKey]*Finding
 	order     []findingKey
 	questions map[questionKey]*asked
-	recheck   map[domain.ID]time.Time
+	trees     map[domain.ID]*noted
+}
+
+// noted is what a review notes of a tree.
+type noted struct {
+	places, known int
+	recheck       *time.Time
+}
+
+func (n *noted) same(o *noted) bool {
+	return n.places == o.places && n.known == o.known &&
+		(n.recheck == nil && o.recheck == nil || n.recheck != nil && o.recheck != nil && n.recheck.Equal(*o.recheck))
 }
 
 func newWanted(s domain.Scope) *wanted {
-	return &wanted{s: s, findings: map[findingKey]*Finding{}, questions: map[questionKey]*asked{}, recheck: map[domain.ID]time.Time{}}
+	return &wanted{s: s, findings: map[findingKey]*Finding{}, questions: map[questionKey]*asked{}, trees: map[domain.ID]*noted{}}
 }
 
 func (w *wanted) add(t *Tree, res retrofit.Result) {
@@ -195,8 +206,13 @@ func (w *wanted) add(t *Tree, res retrofit.Result) {
 		}
 		w.questions[a.key()] = &a
 	}
+	n := &noted{places: res.Coverage.Places, known: res.Coverage.Known}
 	if t.RecheckAt != nil {
-		w.recheck[t.ID] = *t.RecheckAt
+		at := t.RecheckAt.Truncate(time.Microsecond)
+		n.recheck = &at
+	}
+	if n.places > 0 || n.recheck != nil {
+		w.trees[t.ID] = n
 	}
 }
 
@@ -206,7 +222,7 @@ func (w *wanted) store(ctx context.Context, s domain.Scope, trees []domain.ID) (
 	ids := domain.IDs(trees)
 	var findings []Finding
 	var open []asked
-	recheck := map[domain.ID]time.Time{}
+	known := map[domain.ID]*noted{}
 	var read pgx.Batch
 	read.Queue(`SELECT `+Findings.List("")+` FROM finding WHERE building_id = $1 AND tree_id = ANY($2) AND cleared_at IS NULL`, s.Building, ids).
 		Query(func(rows pgx.Rows) error {
@@ -216,15 +232,15 @@ func (w *wanted) store(ctx context.Context, s domain.Scope, trees []domain.ID) (
 		Query(func(rows pgx.Rows) error {
 			return questions.Scan(rows, func(q *asked) error { open = append(open, *q); return nil })
 		})
-	read.Queue(`SELECT tree_id, recheck_at FROM recheck WHERE building_id = $1 AND tree_id = ANY($2)`, s.Building, ids).
+	read.Queue(`SELECT tree_id, places, known, recheck_at FROM tree WHERE building_id = $1 AND tree_id = ANY($2)`, s.Building, ids).
 		Query(func(rows pgx.Rows) error {
 			for rows.Next() {
 				var id domain.ID
-				var at time.Time
-				if err := rows.Scan(&id, &at); err != nil {
+				var n noted
+				if err := rows.Scan(&id, &n.places, &n.known, &n.recheck); err != nil {
 					return err
 				}
-				recheck[id] = at
+				known[id] = &n
 			}
 			return rows.Err()
 		})
@@ -236,8 +252,10 @@ func (w *wanted) store(ctx context.Context, s domain.Scope, trees []domain.ID) (
 	if err := w.storeFindings(ctx, s, findings, &write, &out); err != nil {
 		return Outcome{}, err
 	}
-	w.storeQuestions(s, open, &write)
-	w.storeRechecks(s, recheck, &write)
+	if err := w.storeQuestions(ctx, s, open, &write); err != nil {
+		return Outcome{}, err
+	}
+	w.storeTrees(s, known, &write)
 	if write.Len() == 0 {
 		return out, nil
 	}
@@ -303,12 +321,13 @@ func (w *wanted) storeFindings(ctx context.Context, s domain.Scope, standing []F
 	return Findings.Copy(ctx, s, len(opened), func(i int) *Finding { return opened[i] })
 }
 
-func (w *wanted) storeQuestions(s domain.Scope, open []asked, write *pgx.Batch) {
+func (w *wanted) storeQuestions(ctx context.Context, s domain.Scope, open []asked, write *pgx.Batch) error {
+	var gone []domain.ID
 	for i := range open {
 		was := &open[i]
 		want := w.questions[was.key()]
 		if want == nil {
-			write.Queue(`DELETE FROM question WHERE building_id = $1 AND id = $2`, s.Building, was.ID)
+			gone = append(gone, was.ID)
 			continue
 		}
 		if want.Rule != was.Rule || want.Severity != was.Severity || want.Places != was.Places || want.Blocks != was.Blocks {
@@ -317,28 +336,44 @@ func (w *wanted) storeQuestions(s domain.Scope, open []asked, write *pgx.Batch) 
 		}
 		delete(w.questions, was.key())
 	}
+	if gone != nil {
+		write.Queue(`DELETE FROM question WHERE building_id = $1 AND id = ANY($2)`, s.Building, domain.IDs(gone))
+	}
+	fresh := make([]*asked, 0, len(w.questions))
 	for _, q := range w.questions {
 		q.ID = domain.NewID()
-		write.Queue(`
-			INSERT INTO question (building_id, id, tree_id, field, about_kind, about_id, with_id, rule, severity, blocks, places, asked_at)
-			VALUES ($1, $2, $3, $4, $5, $6, $7, $8, $9, $10, $11, $12)`,
-			s.Building, q.ID, q.TreeID, q.Field, q.AboutKind, q.AboutID, q.WithID, q.Rule, q.Severity, q.Blocks, q.Places, q.AskedAt)
+		fresh = append(fresh, q)
 	}
+	if len(fresh) == 0 {
+		return nil
+	}
+	return questions.Copy(ctx, s, len(fresh), func(i int) *asked { return fresh[i] })
 }
 
-func (w *wanted) storeRechecks(s domain.Scope, standing map[domain.ID]time.Time, write *pgx.Batch) {
-	for tree, at := range standing {
-		want, ok := w.recheck[tree]
-		want = want.Truncate(time.Microsecond)
-		switch {
-		case !ok:
-			write.Queue(`DELETE FROM recheck WHERE building_id = $1 AND tree_id = $2`, s.Building, tree)
-		case !want.Equal(at):
-			write.Queue(`UPDATE recheck SET recheck_at = $3 WHERE building_id = $1 AND tree_id = $2`, s.Building, tree, want)
+func (w *wanted) storeTrees(s domain.Scope, standing map[domain.ID]*noted, write *pgx.Batch) {
+	var gone, ids []domain.ID
+	var places, known []int
+	var recheck []*time.Time
+	for id := range standing {
+		if w.trees[id] == nil {
+			gone = append(gone, id)
 		}
-		delete(w.recheck, tree)
 	}
-	for tree, at := range w.recheck {
-		write.Queue(`INSERT INTO recheck (building_id, tree_id, recheck_at) VALUES ($1, $2, $3)`, s.Building, tree, at.Truncate(time.Microsecond))
+	for id, n := range w.trees {
+		if was := standing[id]; was == nil || !was.same(n) {
+			ids, places, known, recheck = append(ids, id), append(places, n.places), append(known, n.known), append(recheck, n.recheck)
+		}
+	}
+	if gone != nil {
+		write.Queue(`DELETE FROM tree WHERE building_id = $1 AND tree_id = ANY($2)`, s.Building, domain.IDs(gone))
+	}
+	if ids != nil {
+		write.Queue(`
+			INSERT INTO tree (building_id, tree_id, places, known, recheck_at)
+			SELECT $1, n.tree_id, n.places, n.known, n.recheck_at
+			  FROM unnest($2::uuid[], $3::int[], $4::int[], $5::timestamptz[]) AS n (tree_id, places, known, recheck_at)
+			    ON CONFLICT (building_id, tree_id) DO UPDATE
+			   SET places = excluded.places, known = excluded.known, recheck_at = excluded.recheck_at`,
+			s.Building, domain.IDs(ids), places, known, recheck)
 	}
 }

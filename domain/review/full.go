@@ -99,7 +99,7 @@ func (r *Reviewer) chunk(ctx context.Context, db *pgxpool.Pool, building domain.
 
 // again judges trees under their locks with the catalogue as it stands at the end.
 func (r *Reviewer) again(ctx context.Context, s domain.Scope, trees []domain.ID) (Outcome, error) {
-	if _, err := lock(ctx, s, Touch{}, trees); err != nil {
+	if err := lock(ctx, s, Touch{}, trees); err != nil {
 		return Outcome{}, err
 	}
 	for range tries {
@@ -119,5 +119,5 @@ func (r *Reviewer) again(ctx context.Context, s domain.Scope, trees []domain.ID)
 			return out, err
 		}
 	}
-	return Outcome{}, domain.Conflictf("the catalogue keeps changing; try again")
+	return Outcome{}, errContended
 }
