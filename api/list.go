@@ -188,8 +188,15 @@ func (r *resource[T]) list(c *call) (reply, error) {
 	if c.media != jsonMedia && !q.limited {
 		q.page.Limit = piece
 	}
-	rows, next, err := r.List(c, c.read(), q.page, q.matches)
-	if err != nil {
+	var rows []T
+	var next string
+	fetch := func() error {
+		return c.within(func() (err error) {
+			rows, next, err = r.List(c, c.read(), q.page, q.matches)
+			return err
+		})
+	}
+	if err := fetch(); err != nil {
 		return reply{}, err
 	}
 	w := rowWriter{columns: chosen(r.columns, q.fields), all: q.fields == nil, media: c.media}
@@ -229,7 +236,7 @@ func (r *resource[T]) list(c *call) (reply, error) {
 			}
 			b.Reset()
 			q.page.Cursor = next
-			if rows, next, err = r.List(c, c.read(), q.page, q.matches); err != nil {
+			if err := fetch(); err != nil {
 				return err
 			}
 			if err := writeRows(&w, &b, rows, false); err != nil {

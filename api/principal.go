@@ -41,11 +41,11 @@ func ParseRole(name string) (Role, bool) {
 	return 0, false
 }
 
-// right is what an operation demands.
+// right is what an operation demands. The zero right is none: nobody has it.
 type right uint8
 
 const (
-	read          right = iota
+	read          right = iota + 1
 	report              // failures, swaps, places kept from a fit check, provisional models
 	writeReadings       // points and readings
 	plan                // everything in a building
@@ -53,7 +53,7 @@ const (
 	rights
 )
 
-var rightNames = [rights]string{"read", "report", "write_readings", "plan", "administer"}
+var rightNames = [rights]string{"", "read", "report", "write_readings", "plan", "administer"}
 
 func (r right) String() string { return rightNames[r] }
 
@@ -135,17 +135,17 @@ type Authenticator interface {
 	Authenticate(ctx context.Context, bearer string) (*Principal, error)
 }
 
-// scope is what an operation is about, and so where its right must be held.
+// scope is what an operation is about, and so where its right must be held. The zero scope is a fault of the table.
 type scope uint8
 
 const (
-	public    scope = iota // no credentials asked for
-	building               // the {building_id} of the path: 404 without any grant there
-	catalogue              // shared by all buildings: the right on any one of them is enough
-	estate                 // the service itself: the right on all buildings
+	public    scope = iota + 1 // no credentials asked for
+	building                   // the {building_id} of the path: 404 without any grant there
+	catalogue                  // shared by all buildings: the right on any one of them is enough
+	estate                     // the service itself: the right on all buildings
 )
 
-var scopeNames = [...]string{"public", "building", "catalogue", "estate"}
+var scopeNames = [...]string{"", "public", "building", "catalogue", "estate"}
 
 func (s scope) String() string { return scopeNames[s] }
 

@@ -81,7 +81,7 @@ func secure(h http.Header, r *http.Request) {
 func (c *call) send(r *reply) error {
 	h := c.w.Header()
 	for _, kv := range r.header {
-		h[kv[0]] = []string{kv[1]}
+		c.set(kv[0], kv[1])
 	}
 	if r.serve != nil {
 		r.serve.ServeHTTP(c.w, c.r)
@@ -106,7 +106,7 @@ func (c *call) send(r *reply) error {
 	}
 	if r.status == http.StatusNotModified || r.raw == nil && r.stream == nil {
 		if tag != "" {
-			h["Etag"] = []string{tag}
+			c.set("Etag", tag)
 		}
 		c.w.WriteHeader(r.status)
 		c.w.WriteHeaderNow()
@@ -115,7 +115,7 @@ func (c *call) send(r *reply) error {
 	if r.media == "" {
 		h["Content-Type"] = jsonValue
 	} else {
-		h["Content-Type"] = []string{r.media}
+		c.set("Content-Type", r.media)
 	}
 	code := ""
 	if (r.stream != nil || len(r.raw) >= smallest) && !strings.HasPrefix(r.media, "text/event-stream") {
@@ -125,7 +125,7 @@ func (c *call) send(r *reply) error {
 		if code != "" { // another representation needs another strong tag (RFC 9110 section 8.8.3.3)
 			tag = tag[:len(tag)-1] + "-" + code + `"`
 		}
-		h["Etag"] = []string{tag}
+		c.set("Etag", tag)
 	}
 	switch code {
 	case "gzip":
@@ -148,7 +148,7 @@ func (c *call) send(r *reply) error {
 	case "zstd":
 		raw = zstdAll.EncodeAll(raw, nil)
 	}
-	h["Content-Length"] = []string{strconv.Itoa(len(raw))}
+	c.set("Content-Length", strconv.Itoa(len(raw)))
 	c.w.WriteHeader(r.status)
 	if c.r.Method == http.MethodHead {
 		c.w.WriteHeaderNow()

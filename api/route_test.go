@@ -34,9 +34,6 @@ func TestTableEqualsContract(t *testing.T) {
 func compareTable(t *testing.T, routes []route, c *apitest.Contract) {
 	t.Helper()
 	line := func(method, path, op, right, scope string) string {
-		if scope == "public" {
-			right = ""
-		}
 		return fmt.Sprintf("%s %s: operationId %s, right %q in %s", method, path, op, right, scope)
 	}
 	var table, said []string
@@ -117,5 +114,26 @@ func TestContractStatesRequirements(t *testing.T) {
 				t.Errorf("%s may answer %d, which the contract does not say", r.Op, s)
 			}
 		}
+	}
+}
+
+// TestRouteSaysWho holds that a line of the table that forgets who may use it cannot be served.
+func TestRouteSaysWho(t *testing.T) {
+	t.Parallel()
+	for _, r := range []route{
+		{Method: "GET", Path: "/x", Op: "x"},
+		{Method: "GET", Path: "/x", Op: "x", Scope: building},
+		{Method: "GET", Path: "/x", Op: "x", Right: read},
+		{Method: "GET", Path: "/x", Op: "x", Right: read, Scope: public},
+	} {
+		func() {
+			defer func() {
+				if recover() == nil {
+					t.Errorf("right %q in scope %q is served", r.Right, r.Scope)
+				}
+			}()
+			reg := prometheus.NewRegistry()
+			newServer(Options{Registerer: reg, Gatherer: reg, Authenticator: testKeys}, r)
+		}()
 	}
 }

@@ -96,7 +96,11 @@ func newServer(o Options, more ...route) *Server {
 	return s
 }
 
+// prepare completes a line of the table. It panics where the line does not say who may: a fault of the program.
 func (s *Server) prepare(r *route) *route {
+	if r.Scope == 0 || (r.Right == 0) != (r.Scope == public) {
+		panic("api: the route " + r.Op + " does not say who may use it")
+	}
 	if len(r.Gives) == 0 {
 		r.Gives = []string{jsonMedia}
 	}

@@ -265,7 +265,7 @@ func authenticated(_ context.Context, in *openapi3filter.AuthenticationInput) er
 
 // leak is what no problem may show: SQL, files, Go's names, the words of libraries.
 var leak = regexp.MustCompile(`SQLSTATE|(?i:\bselect\b.+\bfrom\b)|(?i:\binsert\s+into\b)|(?i:\bupdate\b.+\bset\b.+=)|(?i:\bdelete\s+from\b)` +
-	`|(?i:relation "|constraint "|column ")|pgx|pgconn|\.go\b|/(root|home|usr|tmp|var|etc|opt|work)/|[A-Z]:\\` +
+	`|(?i:(relation|constraint|column) \\?")|pgx|pgconn|\.go\b|/(root|home|usr|tmp|var|etc|opt|work)/|[A-Z]:\\` +
 	`|goroutine |runtime error|nil pointer|0x[0-9a-f]{6,}|\*?\b(api|domain|site|plant|event|access|review|loading|retrofit|json|strconv|time|context|http|net|reflect)\.[A-Z]` +
 	`|invalid character|unexpected end of JSON|map\[|struct \{`)
 
