@@ -43,6 +43,7 @@ type Table[T any] struct {
 	What    string // in words
 	columns []column
 	byName  map[string]int
+	list    string // every column
 	scoped  bool
 }
 
@@ -58,6 +59,7 @@ func NewTable[T any](name, what string) *Table[T] {
 	t := &Table[T]{Name: name, What: what, byName: map[string]int{}}
 	t.add(reflect.TypeFor[T](), nil)
 	_, t.scoped = t.byName["building_id"]
+	t.list = strings.Join(t.Columns(), ", ")
 	return t
 }
 
@@ -96,7 +98,7 @@ func (t *Table[T]) Columns() []string {
 // List returns the column list for a SELECT, each with the alias's prefix if one is given.
 func (t *Table[T]) List(alias string) string {
 	if alias == "" {
-		return strings.Join(t.Columns(), ", ")
+		return t.list
 	}
 	return alias + "." + strings.Join(t.Columns(), ", "+alias+".")
 }
