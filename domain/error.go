@@ -116,3 +116,11 @@ func Classify(err error, what string) error {
 	}
 	return fmt.Errorf("%s: %w", what, err)
 }
+
+// FieldsOf returns the wrong fields that the first Error in err's chain names.
+func FieldsOf(err error) []Field {
+	if e, ok := errors.AsType[*Error](err); ok {
+		return e.Fields
+	}
+	return nil
+}

@@ -377,3 +377,13 @@ func Repoint(ctx context.Context, s domain.Scope, kind string, ids []domain.ID, 
 	}
 	return nil
 }
+
+// PricesOn returns the price of each model in force on a day: the latest from a date that has come. A model with
+// prices in several currencies has the one whose date is latest, and the first by code where they tie.
+func PricesOn(ctx context.Context, s domain.Scope, day domain.Date) (map[domain.ID]Price, error) {
+	out := map[domain.ID]Price{}
+	err := Prices.Each(ctx, s, func(p *Price) error { out[p.ModelID] = *p; return nil }, `
+		WHERE from_date <= $1 AND retired_at IS NULL
+		ORDER BY from_date, currency DESC`, day)
+	return out, err
+}
