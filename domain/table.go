@@ -39,17 +39,20 @@ func (r *CatalogueRow) CatalogueHead() *CatalogueRow { return r }
 // Table maps T to a table whose columns have the names of T's JSON fields. A statement made by it always lists its
 // columns, so a column added by a later release does no harm to an earlier one.
 type Table[T any] struct {
-	Name    string // in SQL
-	What    string // in words
-	columns []column
-	byName  map[string]int
-	list    string // every column
-	scoped  bool
+	Name       string // in SQL
+	What       string // in words
+	columns    []column
+	byName     map[string]int
+	list       string // every column
+	scoped     bool
+	updateSQL  string
+	updateArgs []int // columns, by position
 }
 
 type column struct {
-	name string
-	path []int
+	name    string
+	path    []int
+	private bool // not shown to clients
 }
 
 // NewTable describes the table name, called what in messages. T is a struct; a column is named by the field's `db`
@@ -60,6 +63,7 @@ func NewTable[T any](name, what string) *Table[T] {
 	t.add(reflect.TypeFor[T](), nil)
 	_, t.scoped = t.byName["building_id"]
 	t.list = strings.Join(t.Columns(), ", ")
+	t.prepareUpdate()
 	return t
 }
 
@@ -72,6 +76,7 @@ func (t *Table[T]) add(typ reflect.Type, path []int) {
 			t.add(f.Type, at)
 			continue
 		}
+		private := name == "-"
 		if db := f.Tag.Get("db"); db != "" {
 			name = db
 		}
@@ -82,7 +87,7 @@ func (t *Table[T]) add(typ reflect.Type, path []int) {
 			panic("domain: column " + name + " twice in " + t.Name)
 		}
 		t.byName[name] = len(t.columns)
-		t.columns = append(t.columns, column{name, at})
+		t.columns = append(t.columns, column{name, at, private})
 	}
 }
 
@@ -198,27 +203,36 @@ func (t *Table[T]) Copy(ctx context.Context, s Scope, n int, row func(i int) *T)
 	return Classify(err, t.What)
 }
 
-// fixed are the columns an update never sets.
-var fixed = map[string]bool{"building_id": true, "id": true, "version": true, "created_at": true}
-
-func (t *Table[T]) updateSQL() string {
+// prepareUpdate writes the statement that Update runs, and which columns its arguments are. An update never sets what
+// says which row it is, nor when it was made.
+func (t *Table[T]) prepareUpdate() {
 	var set []string
-	where := ""
+	where := "true"
 	for i, c := range t.columns {
-		switch {
-		case c.name == "version":
+		n := len(t.updateArgs) + 1
+		switch c.name {
+		case "created_at":
+			continue
+		case "version":
 			set = append(set, "version = version + 1")
-			where += fmt.Sprintf(" AND version = $%d", i+1)
-		case c.name == "id", c.name == "building_id":
-			where += fmt.Sprintf(" AND %s = $%d", c.name, i+1)
-		case fixed[c.name]:
-			// kept in the argument list so that numbers follow the columns
-			where += fmt.Sprintf(" AND $%d::timestamptz IS NOT NULL", i+1)
+			where += fmt.Sprintf(" AND version = $%d", n)
+		case "id", "building_id":
+			where += fmt.Sprintf(" AND %s = $%d", c.name, n)
 		default:
-			set = append(set, fmt.Sprintf("%s = $%d", c.name, i+1))
+			set = append(set, fmt.Sprintf("%s = $%d", c.name, n))
 		}
+		t.updateArgs = append(t.updateArgs, i)
 	}
-	return "UPDATE " + t.Name + " SET " + strings.Join(set, ", ") + " WHERE true" + where + " RETURNING version"
+	t.updateSQL = "UPDATE " + t.Name + " SET " + strings.Join(set, ", ") + " WHERE " + where + " RETURNING version"
+}
+
+func (t *Table[T]) updateValues(row *T) []any {
+	all := t.Values(row)
+	out := make([]any, len(t.updateArgs))
+	for i, n := range t.updateArgs {
+		out[i] = all[n]
+	}
+	return out
 }
 
 // Update stores row if the stored version is still row's, and raises row's version. It fails with Stale if somebody
@@ -226,7 +240,7 @@ func (t *Table[T]) updateSQL() string {
 func (t *Table[T]) Update(ctx context.Context, s Scope, row *T) error {
 	v := reflect.ValueOf(row).Elem()
 	version := v.FieldByIndex(t.columns[t.byName["version"]].path).Addr().Interface().(*int64)
-	err := s.QueryRow(ctx, t.updateSQL(), t.Values(row)...).Scan(version)
+	err := s.QueryRow(ctx, t.updateSQL, t.updateValues(row)...).Scan(version)
 	if !errors.Is(err, pgx.ErrNoRows) {
 		return Classify(err, t.What)
 	}
@@ -241,11 +255,10 @@ func (t *Table[T]) UpdateAll(ctx context.Context, s Scope, rows []*T) error {
 	if len(rows) == 0 {
 		return nil
 	}
-	sql := t.updateSQL()
 	var batch pgx.Batch
 	for _, row := range rows {
 		version := t.Targets(row)[t.byName["version"]]
-		batch.Queue(sql, t.Values(row)...).QueryRow(func(r pgx.Row) error { return r.Scan(version) })
+		batch.Queue(t.updateSQL, t.updateValues(row)...).QueryRow(func(r pgx.Row) error { return r.Scan(version) })
 	}
 	err := s.SendBatch(ctx, &batch).Close()
 	if errors.Is(err, pgx.ErrNoRows) {
@@ -259,7 +272,10 @@ func (t *Table[T]) Same(a, b *T) bool {
 	va, vb := t.Values(a), t.Values(b)
 	for i, c := range t.columns {
 		switch c.name {
-		case "version", "created_at", "updated_at", "retired_at", "tree_id", "kind":
+		case "version", "created_at", "updated_at", "retired_at":
+			continue
+		}
+		if c.private {
 			continue
 		}
 		if !alike(va[i], vb[i]) {

@@ -241,20 +241,32 @@ func (e *Edit) carry(ctx context.Context, w Swap) error {
 	case KindLamp:
 		return e.carryLamp(ctx, w)
 	case KindBattery:
-		return e.set(ctx, w, KindFixture, `battery = $3, updated_at = $4`, w.Battery)
+		return e.set(ctx, w, `
+			UPDATE place
+			   SET battery = $3, version = version + 1, updated_at = $4
+			 WHERE building_id = $1 AND id = $2 AND kind = 'fixture'`, w.Battery, e.At)
 	case KindDriver:
-		return e.set(ctx, w, "", `driver_model_id = $3, updated_at = $4, fitted_at = CASE WHEN kind = 'driver' THEN $5 ELSE fitted_at END`, w.ModelID)
+		return e.set(ctx, w, `
+			UPDATE place
+			   SET driver_model_id = $3, version = version + 1, updated_at = $4,
+			       fitted_at = CASE WHEN kind = 'driver' THEN $5 ELSE fitted_at END
+			 WHERE building_id = $1 AND id = $2 AND kind IN ('driver', 'fixture')`, w.ModelID, e.At, w.DoneAt)
 	case KindDimmer:
-		return e.set(ctx, w, KindDimmer, `dimmer_model_id = $3, updated_at = $4, fitted_at = $5`, w.ModelID)
+		return e.set(ctx, w, `
+			UPDATE place
+			   SET dimmer_model_id = $3, version = version + 1, updated_at = $4, fitted_at = $5
+			 WHERE building_id = $1 AND id = $2 AND kind = 'dimmer'`, w.ModelID, e.At, w.DoneAt)
 	default:
-		return e.set(ctx, w, KindFixture, `fixture_model_id = $3, updated_at = $4, fitted_at = $5`, w.ModelID)
+		return e.set(ctx, w, `
+			UPDATE place
+			   SET fixture_model_id = $3, version = version + 1, updated_at = $4, fitted_at = $5
+			 WHERE building_id = $1 AND id = $2 AND kind = 'fixture'`, w.ModelID, e.At, w.DoneAt)
 	}
 }
 
-// set changes one place; the assignments take the value as $3, the scope's time as $4 and the time of the act as $5.
-func (e *Edit) set(ctx context.Context, w Swap, kind, assignments string, value any) error {
-	tag, err := e.Exec(ctx, `UPDATE place SET version = version + 1, `+assignments+`
-		 WHERE building_id = $1 AND id = $2 AND ($6 = '' OR kind = $6) AND $5::timestamptz IS NOT NULL`, e.Building, w.PlaceID, value, e.At, w.DoneAt, kind)
+// set changes one place by a statement whose first arguments are the building and the place.
+func (e *Edit) set(ctx context.Context, w Swap, sql string, args ...any) error {
+	tag, err := e.Exec(ctx, sql, append([]any{e.Building, w.PlaceID}, args...)...)
 	if err != nil {
 		return domain.Classify(err, "place")
 	}
