@@ -29,34 +29,40 @@ func (id ID) IsZero() bool { return id == ID{} }
 
 // String returns the canonical lower-case form.
 func (id ID) String() string {
-	b, _ := id.MarshalText() // MarshalText of an ID cannot fail
-	return string(b)
+	b := id.text()
+	return string(b[:])
 }
 
 // MarshalText writes the canonical lower-case form.
 func (id ID) MarshalText() ([]byte, error) {
-	var b [36]byte
+	b := id.text()
+	return b[:], nil
+}
+
+func (id ID) text() (b [36]byte) {
 	hex.Encode(b[0:8], id[0:4])
 	hex.Encode(b[9:13], id[4:6])
 	hex.Encode(b[14:18], id[6:8])
 	hex.Encode(b[19:23], id[8:10])
 	hex.Encode(b[24:36], id[10:16])
 	b[8], b[13], b[18], b[23] = '-', '-', '-', '-'
-	return b[:], nil
+	return b
 }
 
 // UnmarshalText reads the canonical form. It fails with Invalid for anything else.
 func (id *ID) UnmarshalText(b []byte) error {
-	bad := Invalidf("%.40q is not a UUID such as 0192f0c1-2345-7abc-8def-0123456789ab", b)
+	bad := func() error {
+		return Invalidf("%.40q is not a UUID such as 0192f0c1-2345-7abc-8def-0123456789ab", b)
+	}
 	if len(b) != 36 || b[8] != '-' || b[13] != '-' || b[18] != '-' || b[23] != '-' {
-		return bad
+		return bad()
 	}
 	var out ID
 	at := 0
 	for _, part := range [5][2]int{{0, 8}, {9, 13}, {14, 18}, {19, 23}, {24, 36}} {
 		n, err := hex.Decode(out[at:], b[part[0]:part[1]])
 		if err != nil {
-			return bad
+			return bad()
 		}
 		at += n
 	}

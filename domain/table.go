@@ -43,6 +43,7 @@ type Table[T any] struct {
 	What    string // in words
 	columns []column
 	byName  map[string]int
+	list    string // every column
 	scoped  bool
 }
 
@@ -58,6 +59,7 @@ func NewTable[T any](name, what string) *Table[T] {
 	t := &Table[T]{Name: name, What: what, byName: map[string]int{}}
 	t.add(reflect.TypeFor[T](), nil)
 	_, t.scoped = t.byName["building_id"]
+	t.list = strings.Join(t.Columns(), ", ")
 	return t
 }
 
@@ -96,7 +98,7 @@ func (t *Table[T]) Columns() []string {
 // List returns the column list for a SELECT, each with the alias's prefix if one is given.
 func (t *Table[T]) List(alias string) string {
 	if alias == "" {
-		return strings.Join(t.Columns(), ", ")
+		return t.list
 	}
 	return alias + "." + strings.Join(t.Columns(), ", "+alias+".")
 }
@@ -232,4 +234,49 @@ func (t *Table[T]) Update(ctx context.Context, s Scope, row *T) error {
 		return err
 	}
 	return &Error{Kind: Stale, Msg: t.What + " was changed by someone else; read it again"}
+}
+
+// UpdateAll is Update of many rows in one round trip.
+func (t *Table[T]) UpdateAll(ctx context.Context, s Scope, rows []*T) error {
+	if len(rows) == 0 {
+		return nil
+	}
+	sql := t.updateSQL()
+	var batch pgx.Batch
+	for _, row := range rows {
+		version := t.Targets(row)[t.byName["version"]]
+		batch.Queue(sql, t.Values(row)...).QueryRow(func(r pgx.Row) error { return r.Scan(version) })
+	}
+	err := s.SendBatch(ctx, &batch).Close()
+	if errors.Is(err, pgx.ErrNoRows) {
+		return &Error{Kind: Stale, Msg: t.What + " was changed by someone else; read it again"}
+	}
+	return Classify(err, t.What)
+}
+
+// Same reports whether two rows agree in everything a client may set.
+func (t *Table[T]) Same(a, b *T) bool {
+	va, vb := t.Values(a), t.Values(b)
+	for i, c := range t.columns {
+		switch c.name {
+		case "version", "created_at", "updated_at", "retired_at", "tree_id", "kind":
+			continue
+		}
+		if !alike(va[i], vb[i]) {
+			return false
+		}
+	}
+	return true
+}
+
+// alike compares two values; times are compared as instants at the database's precision.
+func alike(a, b any) bool {
+	switch x := a.(type) {
+	case *time.Time:
+		y := b.(*time.Time)
+		return x == nil && y == nil || x != nil && y != nil && x.Truncate(time.Microsecond).Equal(y.Truncate(time.Microsecond))
+	case time.Time:
+		return x.Truncate(time.Microsecond).Equal(b.(time.Time).Truncate(time.Microsecond))
+	}
+	return reflect.DeepEqual(a, b)
 }

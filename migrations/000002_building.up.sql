@@ -12,6 +12,24 @@ CREATE TABLE building_head (
     CONSTRAINT building_head_building_fkey FOREIGN KEY (building_id) REFERENCES building (id)
 );
 
+-- What an hour of labour, a kilowatt-hour and the like cost in this building from a date on.
+CREATE TABLE building_rate (
+    building_id            uuid NOT NULL,
+    id                     uuid NOT NULL,
+    version                bigint NOT NULL,
+    created_at             timestamptz NOT NULL,
+    updated_at             timestamptz NOT NULL,
+    retired_at             timestamptz,
+    rate                   text NOT NULL,
+    from_date              date NOT NULL,
+    amount                 numeric(14,4) NOT NULL,
+    currency               text NOT NULL DEFAULT '',
+    source                 text NOT NULL DEFAULT '',
+    CONSTRAINT building_rate_pkey PRIMARY KEY (building_id, id),
+    CONSTRAINT building_rate_from_key UNIQUE (building_id, rate, currency, from_date),
+    CONSTRAINT building_rate_building_fkey FOREIGN KEY (building_id) REFERENCES building (id)
+);
+
 CREATE TABLE building_total (
     building_id            uuid NOT NULL,
     name                   text NOT NULL,
@@ -392,6 +410,7 @@ CREATE TABLE finding (
     lamps                  integer NOT NULL,
     sentence               text NOT NULL,
     steps                  jsonb NOT NULL,
+    excess                 double precision NOT NULL,
     rule_set               integer NOT NULL,
     input_hash             bytea NOT NULL,
     opened_at              timestamptz NOT NULL,
@@ -413,23 +432,30 @@ CREATE TABLE question (
     field                  text NOT NULL,
     about_kind             text NOT NULL,
     about_id               uuid NOT NULL,
+    with_id                uuid NOT NULL,
     rule                   text NOT NULL,
     severity               text NOT NULL,
+    blocks                 boolean NOT NULL,
     places                 integer NOT NULL,
     asked_at               timestamptz NOT NULL,
     CONSTRAINT question_pkey PRIMARY KEY (building_id, id),
-    CONSTRAINT question_about_key UNIQUE (building_id, tree_id, field, about_kind, about_id),
+    CONSTRAINT question_about_key UNIQUE (building_id, tree_id, field, about_kind, about_id, with_id),
     CONSTRAINT question_building_fkey FOREIGN KEY (building_id) REFERENCES building (id)
 );
 
--- When a tree must be looked at again because time alone changes what is found.
-CREATE TABLE recheck (
+-- What a review noted of each tree: luminaires in it, how many of them could be judged, and when time alone may change
+-- what is found.
+CREATE TABLE tree (
     building_id            uuid NOT NULL,
     tree_id                uuid NOT NULL,
-    recheck_at             timestamptz NOT NULL,
-    CONSTRAINT recheck_pkey PRIMARY KEY (building_id, tree_id),
-    CONSTRAINT recheck_building_fkey FOREIGN KEY (building_id) REFERENCES building (id)
+    places                 integer NOT NULL,
+    known                  integer NOT NULL,
+    recheck_at             timestamptz,
+    CONSTRAINT tree_pkey PRIMARY KEY (building_id, tree_id),
+    CONSTRAINT tree_building_fkey FOREIGN KEY (building_id) REFERENCES building (id)
 );
+
+CREATE INDEX tree_recheck_idx ON tree (building_id, recheck_at) WHERE recheck_at IS NOT NULL;
 
 CREATE TABLE waiver (
     building_id            uuid NOT NULL,

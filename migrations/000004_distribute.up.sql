@@ -12,8 +12,8 @@ BEGIN
                                 'fixture_model', 'pairing', 'price'] LOOP
         EXECUTE format('SELECT create_reference_table(%L)', name);
     END LOOP;
-    FOREACH name IN ARRAY ARRAY['building_head', 'building_total', 'space', 'make_up', 'circuit', 'place', 'feed', 'control',
-                                'unit', 'failure', 'emergency_test', 'trip', 'finding', 'question', 'recheck', 'waiver',
+    FOREACH name IN ARRAY ARRAY['building_head', 'building_total', 'building_rate', 'space', 'make_up', 'circuit', 'place', 'feed', 'control',
+                                'unit', 'failure', 'emergency_test', 'trip', 'finding', 'question', 'tree', 'waiver',
                                 'audit', 'event'] LOOP
         EXECUTE format('SELECT create_distributed_table(%L, %L)', name, 'building_id');
     END LOOP;

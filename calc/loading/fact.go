@@ -106,6 +106,7 @@ type Dimmer struct {
 	Model       *Control // nil: unknown
 	Circuit     int      // index in System.Circuits; -1: unknown
 	WeldsInYear int      // contact_welded failures in the last 12 months
+	Proposed    bool     // would be fitted: a proposal, not a fact
 	FactSource  string
 }
 
@@ -119,6 +120,7 @@ type Driver struct {
 	Integral       bool // inside the one fixture that names it: findings are the fixture's
 	HeatFailure    bool // an `overheats` failure is on record
 	FailuresInYear int  // of the gear itself, last 12 months
+	Proposed       bool // would be fitted: a proposal, not a fact
 	FactSource     string
 }
 

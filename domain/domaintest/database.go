@@ -51,8 +51,9 @@ var run struct {
 // the job library. It is given the template's connection URL.
 type Prepare func(ctx context.Context, url string) error
 
-// Main runs the tests and exits. It fails the run if the server does not stop cleanly or a process is left.
-func Main(m *testing.M, prepare ...Prepare) {
+// Main runs the tests (m is the testing.M, or what a package wraps around it) and exits. It fails the run if the server
+// does not stop cleanly or a process is left.
+func Main(m interface{ Run() int }, prepare ...Prepare) {
 	run.ready, run.prepare = true, prepare
 	run.start = sync.OnceValue(startServer)
 	code := m.Run()

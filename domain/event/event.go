@@ -30,7 +30,6 @@ type Act struct {
 // pending is what a transaction has yet to write.
 type pending struct {
 	acts []written
-	held bool
 }
 
 type written struct {
@@ -111,15 +110,11 @@ func Hold(ctx context.Context, s domain.Scope) error {
 
 func hold(ctx context.Context, s domain.Scope) (head, error) {
 	var h head
-	row := s.QueryRow(ctx, `
-		SELECT audit_seq, audit_hash, event_seq
-		  FROM building_head
-		 WHERE building_id = $1
-		   FOR NO KEY UPDATE`, s.Building)
+	sql, args := `SELECT audit_seq, audit_hash, event_seq FROM building_head WHERE building_id = $1 FOR NO KEY UPDATE`, []any{s.Building}
 	if s.Building.IsZero() {
-		row = s.QueryRow(ctx, `SELECT audit_seq, audit_hash, event_seq FROM central_head WHERE id = 1 FOR NO KEY UPDATE`)
+		sql, args = `SELECT audit_seq, audit_hash, event_seq FROM central_head WHERE id = 1 FOR NO KEY UPDATE`, nil
 	}
-	err := row.Scan(&h.auditSeq, &h.auditHash, &h.eventSeq)
+	err := s.QueryRow(ctx, sql, args...).Scan(&h.auditSeq, &h.auditHash, &h.eventSeq)
 	return h, domain.Classify(err, "building")
 }
 
@@ -214,3 +209,9 @@ func chain(previous, body []byte) []byte {
 	sum.Write(body)
 	return sum.Sum(nil)
 }
+
+// Mark returns where the acts gathered so far end, for Rewind.
+func Mark(s domain.Scope) int { return len(gather(s).acts) }
+
+// Rewind forgets the acts gathered since mark: what they told was rolled back.
+func Rewind(s domain.Scope, mark int) { p := gather(s); p.acts = p.acts[:mark] }

@@ -81,10 +81,10 @@ type Pairing struct {
 // A Price is what one piece of a model costs from a date on.
 type Price struct {
 	domain.CatalogueRow
-	ModelKind string      `json:"model_kind"` // lamp, driver, dimmer, fixture
-	ModelID   domain.ID   `json:"model_id"`
-	FromDate  domain.Date `json:"from_date"` // YYYY-MM-DD
-	Amount    string      `json:"amount"`    // decimal
-	Currency  string      `json:"currency"`  // ISO 4217
-	Source    string      `json:"source,omitempty"`
+	ModelKind string         `json:"model_kind"` // lamp, driver, dimmer, fixture
+	ModelID   domain.ID      `json:"model_id"`
+	FromDate  domain.Date    `json:"from_date"` // YYYY-MM-DD
+	Amount    domain.Decimal `json:"amount"`    // per piece
+	Currency  string         `json:"currency"`  // ISO 4217
+	Source    string         `json:"source,omitempty"`
 }

@@ -1,0 +1,6 @@
+package retrofit
+
+func f64(x float64) *float64 { return &x }
+func integer(n int) *int     { return &n }
+func yes() *bool             { b := true; return &b }
+func no() *bool              { b := false; return &b }

@@ -1,0 +1,105 @@
+package review
+
+import (
+	"cmp"
+	"context"
+	"slices"
+
+	"lampward/calc/retrofit"
+	"lampward/domain"
+	"lampward/domain/plant"
+)
+
+// sortGroups puts first what can hurt a person, then severity times lamps affected, then the oldest.
+func sortGroups(gs []Group) {
+	slices.SortStableFunc(gs, func(a, b Group) int {
+		return cmp.Or(
+			cmp.Compare(retrofit.Weight(retrofit.Severity(b.Severity), b.Lamps), retrofit.Weight(retrofit.Severity(a.Severity), a.Lamps)),
+			a.Since.Compare(b.Since), cmp.Compare(a.Rule, b.Rule), cmp.Compare(a.Sentence, b.Sentence))
+	})
+}
+
+// GroupsEverywhere returns the open findings of all buildings by cause, of those named where buildings is not nil.
+func GroupsEverywhere(ctx context.Context, db domain.Queryer, cat *plant.Catalogue, buildings []domain.ID) ([]Group, error) {
+	var only any
+	if buildings != nil {
+		only = domain.IDs(buildings)
+	}
+	rows, err := db.Query(ctx, `
+		SELECT f.rule, f.lamp_model_id, f.driver_model_id, f.dimmer_model_id, max(`+rankSQL+`), bool_or(f.blocks), count(*), sum(f.lamps),
+		       count(DISTINCT f.building_id), 0, min(f.opened_at), (array_agg(f.sentence ORDER BY f.lamps DESC, f.id))[1]
+		  FROM finding f
+		 WHERE f.cleared_at IS NULL AND ($1::uuid[] IS NULL OR f.building_id = ANY($1))
+		 GROUP BY f.rule, f.lamp_model_id, f.driver_model_id, f.dimmer_model_id`, only)
+	if err != nil {
+		return nil, domain.Classify(err, "finding")
+	}
+	return collectGroups(rows, cat)
+}
+
+// A Summary is a building's state on one line.
+type Summary struct {
+	BuildingID domain.ID      `json:"building_id"`
+	Code       string         `json:"code"`
+	Name       string         `json:"name"`
+	Findings   map[string]int `json:"findings"` // open, by severity
+	Questions  int            `json:"questions"`
+	Coverage   Coverage       `json:"coverage"`
+	Pending    bool           `json:"pending"` // a review is owed: the figures may be of before a change
+}
+
+// Summaries returns the state of every building in use, of those named where buildings is not nil, in the order of
+// their codes.
+func Summaries(ctx context.Context, db domain.Queryer, buildings []domain.ID) ([]Summary, error) {
+	var only any
+	if buildings != nil {
+		only = domain.IDs(buildings)
+	}
+	rows, err := db.Query(ctx, `
+		SELECT b.id, b.code, b.name,
+		       (SELECT coalesce(jsonb_object_agg(severity, n), '{}') FROM (SELECT severity, count(*) AS n FROM finding f
+		         WHERE f.building_id = b.id AND f.cleared_at IS NULL GROUP BY severity) AS x),
+		       (SELECT count(*) FROM (SELECT DISTINCT field, about_kind, about_id, with_id FROM question q WHERE q.building_id = b.id) AS x),
+		       coalesce(t.places, 0), coalesce(t.known, 0),
+		       EXISTS (SELECT FROM review_due d WHERE d.building_id IS NULL OR d.building_id = b.id)
+		  FROM building b
+		  LEFT JOIN (SELECT building_id, sum(places) AS places, sum(known) AS known FROM tree GROUP BY building_id) AS t ON t.building_id = b.id
+		 WHERE b.retired_at IS NULL AND ($1::uuid[] IS NULL OR b.id = ANY($1))
+		 ORDER BY b.code`, only)
+	if err != nil {
+		return nil, domain.Classify(err, "building")
+	}
+	defer rows.Close()
+	out := []Summary{}
+	for rows.Next() {
+		var s Summary
+		if err := rows.Scan(&s.BuildingID, &s.Code, &s.Name, &s.Findings, &s.Questions, &s.Coverage.Places, &s.Coverage.Known, &s.Pending); err != nil {
+			return nil, domain.Classify(err, "building")
+		}
+		if s.Coverage.Places > 0 {
+			r := float64(s.Coverage.Known) / float64(s.Coverage.Places)
+			s.Coverage.Ratio = &r
+		}
+		out = append(out, s)
+	}
+	return out, domain.Classify(rows.Err(), "building")
+}
+
+// CountByRule returns how many findings are open by rule, over all buildings.
+func CountByRule(ctx context.Context, db domain.Queryer) (map[string]int, error) {
+	rows, err := db.Query(ctx, `SELECT rule, count(*) FROM finding WHERE cleared_at IS NULL GROUP BY rule`)
+	if err != nil {
+		return nil, domain.Classify(err, "finding")
+	}
+	defer rows.Close()
+	out := map[string]int{}
+	for rows.Next() {
+		var rule string
+		var n int
+		if err := rows.Scan(&rule, &n); err != nil {
+			return nil, domain.Classify(err, "finding")
+		}
+		out[rule] = n
+	}
+	return out, domain.Classify(rows.Err(), "finding")
+}

@@ -1,0 +1,9 @@
+package review_test
+
+import (
+	"testing"
+
+	"lampward/domain/domaintest"
+)
+
+func TestMain(m *testing.M) { domaintest.Main(m) }
