@@ -77,12 +77,12 @@ func find(dirs []string) (Programs, error) {
 func searchDirs() []string {
 	var dirs []string
 	for _, name := range []string{"postgres", "initdb"} {
-		// An entry of the PATH is often a link (or, on Debian, no entry at all): the link's target has the neighbours.
+		// An entry of the PATH is often a link to one program; all of them are beside its target.
 		if path, err := exec.LookPath(name); err == nil {
-			dirs = append(dirs, filepath.Dir(path))
 			if real, err := filepath.EvalSymlinks(path); err == nil {
 				dirs = append(dirs, filepath.Dir(real))
 			}
+			dirs = append(dirs, filepath.Dir(path))
 		}
 	}
 	for _, pattern := range places[runtime.GOOS] {

@@ -159,7 +159,9 @@ func (s *Server) DatabaseURL(database string) string {
 	query := url.Values{"host": {s.host}, "port": {strconv.Itoa(s.port)}, "sslmode": {"disable"}}
 	u := url.URL{
 		Scheme: "postgres", User: url.UserPassword(superuser, s.password),
-		Path: "/" + database, RawQuery: query.Encode(),
+		Path: "/" + database,
+		// The command line client does not read a plus sign as a space.
+		RawQuery: strings.ReplaceAll(query.Encode(), "+", "%20"),
 	}
 	return u.String()
 }
@@ -369,8 +371,9 @@ func (s *Server) choosePlace() error {
 	if err := os.RemoveAll(s.host); err != nil {
 		return err
 	}
-	// The path of a socket fits 104 bytes on the BSDs and macOS, 108 on Linux, with the zero at its end.
-	if len(filepath.Join(s.host, ".s.PGSQL.5432.lock")) <= 100 {
+	// The path of a socket fits 104 bytes on the BSDs and macOS, 108 on Linux, with the zero at its end. And a comma in a
+	// connection URL parts two hosts.
+	if len(filepath.Join(s.host, ".s.PGSQL.5432.lock")) <= 100 && !strings.Contains(s.host, ",") {
 		if err := os.Mkdir(s.host, 0o700); err != nil {
 			return err
 		}
@@ -404,7 +407,7 @@ func (s *Server) launchOnce(ctx context.Context, o Options) error {
 	settings := map[string]string{
 		"cluster_name":            "lampward",
 		"listen_addresses":        "",
-		"unix_socket_directories": s.host,
+		"unix_socket_directories": `"` + strings.ReplaceAll(s.host, `"`, `""`) + `"`, // a list, by commas
 		"unix_socket_permissions": "0700",
 		"port":                    strconv.Itoa(s.port),
 		"log_destination":         "stderr",
@@ -496,7 +499,8 @@ func (s *Server) waitReady(ctx context.Context) error {
 			return fmt.Errorf("the database server ended while starting: %w%s", s.child.exit(), s.logTail())
 		case <-ctx.Done():
 			timer.Stop()
-			return fmt.Errorf("the database server did not start in time: %w%s", ctx.Err(), s.logTail())
+			return fmt.Errorf("the database server did not start in time: %w (the last try to connect: %w)%s",
+				ctx.Err(), err, s.logTail())
 		case <-timer.C:
 		}
 		wait = min(wait*3/2, 200*time.Millisecond)

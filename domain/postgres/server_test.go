@@ -508,6 +508,26 @@ func TestServerThatEndsOnItsOwnIsTold(t *testing.T) {
 	}
 }
 
+func TestFolderNameMayHoldAnything(t *testing.T) {
+	t.Parallel()
+	parent := folder(t)
+	if err := os.Mkdir(parent, 0o755); err != nil {
+		t.Fatal(err)
+	}
+	dir := filepath.Join(parent, `a "b", c's+d%20 ä`)
+	if err := os.Rename(ready(t), dir); err != nil {
+		t.Fatal(err)
+	}
+	s := start(t, Options{Dir: dir, Database: `a "b" c`})
+	if got := ask[string](t, s.URL(), `SELECT current_database()`); got != `a "b" c` {
+		t.Errorf("database %q", got)
+	}
+	out, err := exec.Command(s.programs.Path("psql"), "--no-psqlrc", "-Atc", "SELECT 42", s.URL()).CombinedOutput()
+	if err != nil || strings.TrimSpace(string(out)) != "42" {
+		t.Errorf("the client that comes with the programs: %v\n%s", err, out)
+	}
+}
+
 func TestLongFolderNameGetsAShortSocket(t *testing.T) {
 	t.Parallel()
 	dir := filepath.Join(folder(t), strings.Repeat("long", 25))
