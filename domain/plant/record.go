@@ -77,17 +77,17 @@ func Load(ctx context.Context, s domain.Scope, trees []domain.ID) (*Records, err
 	ask(`SELECT `+Fixtures.List("")+` FROM place WHERE building_id = $1 AND tree_id = ANY($2) AND kind = 'fixture' AND retired_at IS NULL ORDER BY id`, inTrees,
 		collect(Fixtures, &r.Fixtures))
 	ask(`
-		SELECT `+Feeds.List("f")+`
+		SELECT `+Feeds.List("")+`
 		  FROM feed f
-		  JOIN place p ON p.building_id = f.building_id AND p.id = f.place_id
-		 WHERE f.building_id = $1 AND p.building_id = $1 AND p.tree_id = ANY($2) AND f.retired_at IS NULL AND p.retired_at IS NULL
-		 ORDER BY f.id`, inTrees, collect(Feeds, &r.Feeds))
+		 WHERE building_id = $1 AND retired_at IS NULL
+		   AND (SELECT tree_id FROM place p WHERE p.building_id = $1 AND p.id = f.place_id AND p.retired_at IS NULL) = ANY($2)
+		 ORDER BY id`, inTrees, collect(Feeds, &r.Feeds))
 	ask(`
-		SELECT `+Controls.List("c")+`
+		SELECT `+Controls.List("")+`
 		  FROM control c
-		  JOIN place p ON p.building_id = c.building_id AND p.id = c.dimmer_id
-		 WHERE c.building_id = $1 AND p.building_id = $1 AND p.tree_id = ANY($2) AND c.retired_at IS NULL AND p.retired_at IS NULL
-		 ORDER BY c.position, c.id`, inTrees, collect(Controls, &r.Controls))
+		 WHERE building_id = $1 AND retired_at IS NULL
+		   AND (SELECT tree_id FROM place p WHERE p.building_id = $1 AND p.id = c.dimmer_id AND p.retired_at IS NULL) = ANY($2)
+		 ORDER BY position, id`, inTrees, collect(Controls, &r.Controls))
 	ask(`
 		SELECT u.place_id, u.holder, u.lamp_model_id, u.fitted_at
 		  FROM unit u

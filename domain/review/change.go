@@ -113,6 +113,9 @@ func (r *Reviewer) attempt(ctx context.Context, s domain.Scope, cat *plant.Catal
 
 // touched resolves what a touch names into trees.
 func touched(ctx context.Context, s domain.Scope, t Touch) ([]domain.ID, error) {
+	if !t.All && len(t.Places)+len(t.Circuits) == 0 {
+		return nil, nil
+	}
 	sql := `
 		SELECT tree_id FROM place WHERE building_id = $1 AND id = ANY($2)
 		 UNION

@@ -3,10 +3,13 @@ package review
 import (
 	"context"
 	"errors"
+	"runtime"
+	"sync"
 	"time"
 
 	"github.com/jackc/pgx/v5"
 	"github.com/jackc/pgx/v5/pgxpool"
+	"golang.org/x/sync/errgroup"
 
 	"lampward/domain"
 	"lampward/domain/event"
@@ -36,7 +39,7 @@ type owed struct {
 }
 
 // DrainOne does the oldest review that is owed and that nobody else is doing, and reports whether there was one. One
-// that is cut off stays owed.
+// that is cut off stays owed. A program with older rules than those in force does none: it could only undo.
 func (r *Reviewer) DrainOne(ctx context.Context, db *pgxpool.Pool, now func() time.Time) (bool, error) {
 	var did bool
 	err := pgx.BeginFunc(ctx, db, func(tx pgx.Tx) error {
@@ -44,9 +47,10 @@ func (r *Reviewer) DrainOne(ctx context.Context, db *pgxpool.Pool, now func() ti
 		err := tx.QueryRow(ctx, `
 			SELECT id, building_id, tree_id, model_kind, model_id
 			  FROM review_due
+			 WHERE (SELECT rule_set FROM catalogue_head WHERE id = 1) <= $1
 			 ORDER BY created_at, id
 			 LIMIT 1
-			   FOR UPDATE SKIP LOCKED`).Scan(&o.ID, &o.Building, &o.Tree, &o.ModelKind, &o.Model)
+			   FOR UPDATE SKIP LOCKED`, RuleSet).Scan(&o.ID, &o.Building, &o.Tree, &o.ModelKind, &o.Model)
 		if errors.Is(err, pgx.ErrNoRows) {
 			return nil
 		}
@@ -170,7 +174,8 @@ func NoteRuleSet(ctx context.Context, db *pgxpool.Pool, now time.Time) error {
 	})
 }
 
-// Everything judges every building in use, one after another.
+// Everything judges every building in use, several at once where there are processors for it. progress, if not nil, is
+// told of buildings done and in all.
 func (r *Reviewer) Everything(ctx context.Context, db *pgxpool.Pool, now func() time.Time, progress func(done, total int)) (Tally, error) {
 	rows, err := db.Query(ctx, `SELECT id FROM building WHERE retired_at IS NULL ORDER BY code`)
 	if err != nil {
@@ -180,17 +185,28 @@ func (r *Reviewer) Everything(ctx context.Context, db *pgxpool.Pool, now func() 
 	if err != nil {
 		return Tally{}, domain.Classify(err, "building")
 	}
+	var mu sync.Mutex
 	var sum Tally
-	for i, id := range ids {
-		t, err := r.Full(ctx, db, id, now, nil)
-		if err != nil {
-			return sum, err
-		}
-		sum.Trees, sum.Places = sum.Trees+t.Trees, sum.Places+t.Places
-		sum.Opened, sum.Changed, sum.Cleared = sum.Opened+t.Opened, sum.Changed+t.Changed, sum.Cleared+t.Cleared
-		if progress != nil {
-			progress(i+1, len(ids))
-		}
+	done := 0
+	group, ctx := errgroup.WithContext(ctx)
+	group.SetLimit(min(runtime.GOMAXPROCS(0), 4))
+	for _, id := range ids {
+		group.Go(func() error {
+			t, err := r.Full(ctx, db, id, now, nil)
+			if err != nil {
+				return err
+			}
+			mu.Lock()
+			defer mu.Unlock()
+			sum.Trees, sum.Places = sum.Trees+t.Trees, sum.Places+t.Places
+			sum.Opened, sum.Changed, sum.Cleared = sum.Opened+t.Opened, sum.Changed+t.Changed, sum.Cleared+t.Cleared
+			done++
+			if progress != nil {
+				progress(done, len(ids))
+			}
+			return nil
+		})
 	}
-	return sum, nil
+	err = group.Wait()
+	return sum, err
 }
