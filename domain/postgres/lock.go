@@ -43,4 +43,4 @@ func lockFolder(path string) (*folderLock, error) {
 }
 
 // release frees the lock. The file stays: were it removed, two programs could each hold a lock on a file of the name.
-func (l *folderLock) release() error { return l.file.Close() }
+func (l *folderLock) release() error { return errors.Join(unlock(l.file), l.file.Close()) }

@@ -16,3 +16,7 @@ func tryLock(f *os.File) (bool, error) {
 	}
 	return err == nil, err
 }
+
+// unlock frees the lock itself. Closing the file would not be enough: a process that this program forks at that moment
+// holds the file, and with it the lock, until it becomes the program it is to run.
+func unlock(f *os.File) error { return syscall.Flock(int(f.Fd()), syscall.LOCK_UN) }

@@ -41,10 +41,7 @@ func TestMain(m *testing.M) {
 		os.Exit(0)
 	}
 	code := m.Run()
-	if dir, err := initialised(); err != nil {
-		fmt.Fprintln(os.Stderr, err)
-		code = 1
-	} else if err := os.RemoveAll(dir); err != nil {
+	if err := os.RemoveAll(initialisedDir); err != nil {
 		fmt.Fprintln(os.Stderr, err)
 		code = 1
 	}
@@ -81,12 +78,16 @@ func folder(t testing.TB) string {
 	return filepath.Join(dir, "db")
 }
 
+// initialisedDir is the folder that initialised made, or empty.
+var initialisedDir string
+
 // initialised makes one server folder for the copies that ready hands out.
 var initialised = sync.OnceValues(func() (string, error) {
 	dir, err := os.MkdirTemp(parent(), "lampward-postgres-")
 	if err != nil {
 		return "", err
 	}
+	initialisedDir = dir
 	s, err := Start(context.Background(), Options{Dir: dir, NoFsync: true})
 	if err != nil {
 		return dir, err
