@@ -22,8 +22,10 @@ var driverLoadRules = []Rule{
 		Basis:    "IEC 61347-2-2 and IEC 61347-2-13; bands of severity are common practice",
 		Remedy:   "Cut the load, or fit gear with a larger rating.",
 		Cautions: []string{"CA-01", "CA-02", "CA-03"},
-		Asks:     []Field{FieldGearMaxLoad, FieldGearLEDMaxLoad, FieldLampPower, FieldLampPowerFactor, FieldFixtureLamps, FieldFixtureOutput, FieldGearThermal},
-		driver:   driverOverloaded,
+		// The first line is its own; the rest are what every rule waits for, asked in its name.
+		Asks: []Field{FieldGearMaxLoad, FieldGearLEDMaxLoad, FieldLampPower, FieldLampPowerFactor, FieldFixtureLamps, FieldFixtureOutput, FieldGearOutputMaxW, FieldGearThermal,
+			FieldGearKind, FieldDriverModel, FieldFixtureFeed, FieldFittingGear, FieldFittingDriver, FieldFixtureConversion, FieldLampTechnology, FieldLampSupply},
+		driver: driverOverloaded,
 	},
 	{
 		ID: "driver_underloaded", Severity: Medium, Subject: OnDriver,

@@ -16,6 +16,9 @@ func (f *Finding) step(what, sum, basis string) {
 	f.Steps = append(f.Steps, loading.Step{What: what, Sum: sum, Basis: basis})
 }
 
+// shows adds what is on record as the step of a finding that has no arithmetic.
+func (f *Finding) shows(what, sum string) { f.step(what, sum, "the record") }
+
 // screens turns a finding into one against a rule of thumb: low, and it refuses nothing.
 func (f *Finding) screens() {
 	f.Severity, f.Sureness, f.Blocks = Low, Screening, false
