@@ -116,11 +116,17 @@ func TestDriverLoadRules(t *testing.T) {
 			{name: "case above tc", build: and(fed(with(cable24(60), func(g *loading.Gear) { g.TaC, g.TcC = some(50.0), some(85.0) }), of(1, strip24(120))), func(r *rig) { r.Drivers[0].AirC = some(40.0) }),
 				findings: 1, severity: High, sure: Recorded, says: "110 °C"},
 			// Worked check: 105 W, 100 % at 50 °C to 0 at 70 °C; 60 °C allows 52.5 W.
-			{name: "above the curve", build: and(fed(with(transformer(105, 10), func(g *loading.Gear) { g.Derating = []loading.CurvePoint{{AirC: 50, SharePct: 100}, {AirC: 70, SharePct: 0}} }), of(1, halogen12(53))),
+			{name: "above the curve", build: and(fed(with(transformer(105, 10), func(g *loading.Gear) {
+				g.Derating = []loading.CurvePoint{{AirC: 50, SharePct: 100}, {AirC: 70, SharePct: 0}}
+			}), of(1, halogen12(53))),
 				func(r *rig) { r.Drivers[0].AirC = some(60.0) }), findings: 1, severity: High, sure: Recorded, says: "52.5 W"},
-			{name: "on the curve", build: and(fed(with(transformer(105, 10), func(g *loading.Gear) { g.Derating = []loading.CurvePoint{{AirC: 50, SharePct: 100}, {AirC: 70, SharePct: 0}} }), of(1, halogen12(52.5))),
+			{name: "on the curve", build: and(fed(with(transformer(105, 10), func(g *loading.Gear) {
+				g.Derating = []loading.CurvePoint{{AirC: 50, SharePct: 100}, {AirC: 70, SharePct: 0}}
+			}), of(1, halogen12(52.5))),
 				func(r *rig) { r.Drivers[0].AirC = some(60.0) })},
-			{name: "beyond the curve", build: and(fed(with(transformer(105, 10), func(g *loading.Gear) { g.Derating = []loading.CurvePoint{{AirC: 50, SharePct: 100}, {AirC: 60, SharePct: 50}} }), of(1, halogen12(20))),
+			{name: "beyond the curve", build: and(fed(with(transformer(105, 10), func(g *loading.Gear) {
+				g.Derating = []loading.CurvePoint{{AirC: 50, SharePct: 100}, {AirC: 60, SharePct: 50}}
+			}), of(1, halogen12(20))),
 				func(r *rig) { r.Drivers[0].AirC = some(61.0) }), findings: 1, severity: High, sure: Recorded},
 			{name: "ta unknown", build: and(fed(cable24(60), of(1, strip24(30))), func(r *rig) { r.Drivers[0].AirC = some(50.0) }), asks: []Field{FieldGearTa}},
 			{name: "air unknown, no reason to ask", build: fed(cable24(60), of(1, strip24(30)))},
