@@ -328,7 +328,9 @@ func (v *dimmerView) stepRatings(f *Finding, s *dimmerLoad) {
 				sum += loading.SumWords(v.partsOf(m, c))
 			}
 		}
-		f.step("load of "+classWords[c], sum, "nameplate power of the lamps")
+		if sum != "" {
+			f.step("load of "+classWords[c], sum, "nameplate power of the lamps")
+		}
 		f.step("load of "+classWords[c]+" against the rating, losses of gear included", amount(s.class[c], unit)+"; "+loading.Figure(s.class[c].lo)+" / "+
 			loading.Figure(limit)+" = "+loading.Percent(s.class[c].lo/limit), v.by.rule.Basis)
 	}

@@ -55,7 +55,7 @@ var driverLoadRules = []Rule{
 		Basis:    heatMarks + "; derating curve of the data sheet",
 		Remedy:   "Ventilate, reduce the load, or move the gear to a cooler place.",
 		Cautions: []string{"CA-01", "CA-02", "CA-03"},
-		Asks:     []Field{FieldDriverAir, FieldGearTa, FieldGearTc, FieldGearMaxLoad},
+		Asks:     []Field{FieldDriverAir, FieldGearTa, FieldGearTc, FieldGearMaxLoad, FieldLampPower, FieldFixtureLamps},
 		driver:   driverTooHot,
 	},
 	{
@@ -65,7 +65,7 @@ var driverLoadRules = []Rule{
 		Basis:    "80 % is common practice of the trade",
 		Remedy:   "Choose a driver with a larger rating.",
 		Cautions: []string{"CA-01"},
-		Asks:     []Field{FieldGearMaxLoad, FieldLampPower, FieldFixtureLamps},
+		Asks:     []Field{FieldGearMaxLoad, FieldLampPower, FieldFixtureLamps, FieldFixtureOutput},
 		driver:   driverHighlyLoaded,
 	},
 }

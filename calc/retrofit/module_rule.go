@@ -65,7 +65,7 @@ var moduleRules = []Rule{
 		Basis:    "maximum power of the driver; running voltage with a bin of 5 %, from memory of data sheets",
 		Remedy:   "Fit a larger driver, or fewer modules.",
 		Cautions: []string{"CA-01", "CA-03"},
-		Asks:     []Field{FieldGearMaxLoad, FieldForwardV, FieldDriverSetMA, FieldGearOutputMA, FieldFixtureStrings, FieldFixtureLamps},
+		Asks:     []Field{FieldGearMaxLoad, FieldForwardV, FieldDriverSetMA, FieldGearOutputMA, FieldFixtureStrings, FieldFixtureLamps, FieldFixtureOutput},
 		driver:   stringOverDriverPower,
 	},
 	{
@@ -259,6 +259,7 @@ func moduleUndercurrent(v *driverView) {
 
 // A stringView is all that hangs in series on one output of a constant-current driver.
 type stringView struct {
+	output          int  // of several; 0 where there is one
 	modules         span // in series
 	hot, cold, run  span // V
 	unseen          bool // lamps nobody has looked at
@@ -284,6 +285,9 @@ func (v *driverView) eachString(f func(s *stringView)) {
 			continue
 		}
 		var s stringView
+		if several {
+			s.output = n
+		}
 		any := false
 		for _, other := range v.fixtures[at:] {
 			x := &v.by.fixture[other]
@@ -358,7 +362,7 @@ func (v *driverView) askString(s *stringView, missing bool, f Field) {
 		v.askStrings()
 	}
 	if s.unseen {
-		v.askLamps()
+		v.askLampsOf(v.fixtures, nil)
 	}
 }
 

@@ -24,7 +24,7 @@ var protectionRules = []Rule{
 		Basis:    "class I of IEC 61140; recorded on site",
 		Remedy:   "Restore the earth and prove it.",
 		Cautions: []string{"CA-01"},
-		Asks:     []Field{FieldFixtureEarth, FieldFittingClass},
+		Asks:     []Field{FieldFixtureEarth, FieldFittingClass, FieldFixtureModel},
 		fixture:  earthLost,
 	},
 	{
@@ -34,7 +34,7 @@ var protectionRules = []Rule{
 		Basis:    "IEC 60364-7-701 and -702, from memory; damp, wet and outdoor places by common practice",
 		Remedy:   "Fit a luminaire suitable for the zone.",
 		Cautions: []string{"CA-01", "CA-12"},
-		Asks:     []Field{FieldFittingIP, FieldFittingClass, FieldFixtureZone},
+		Asks:     []Field{FieldFittingIP, FieldFittingClass, FieldFixtureZone, FieldFixtureModel},
 		fixture:  zoneUnsuitable,
 	},
 }

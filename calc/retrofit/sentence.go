@@ -290,23 +290,7 @@ func (v *circuitView) aboutPlace() About {
 
 // askLamps asks for what keeps the sum of a driver's lamps from being known: lamps nobody has looked at, power
 // nobody has read.
-func (v *driverView) askLamps() {
-	for _, i := range v.fixtures {
-		x := &v.by.fixture[i]
-		unseen := x.f.LampsUnknown
-		for j := range x.lamps {
-			unseen = unseen || x.lamps[j].model == nil
-		}
-		if unseen {
-			v.ask(FieldFixtureLamps, x.aboutPlace())
-		}
-	}
-	for i := range v.lamps {
-		if l := &v.lamps[i]; l.model != nil && !l.known {
-			v.ask(FieldLampPower, aboutLamp(l.model))
-		}
-	}
-}
+func (v *driverView) askLamps() { v.askLampsOf(v.fixtures, v.lamps) }
 
 // askPowerFactors asks for the power factors that keep the apparent power of a driver's lamps from being known.
 func (v *driverView) askPowerFactors() {
