@@ -174,6 +174,20 @@ func (w wild) system() *loading.System {
 		}
 		s.Fixtures = append(s.Fixtures, f)
 	}
+	// One key is one model.
+	lamps := map[loading.Key]*loading.Lamp{}
+	for i := range s.Fixtures {
+		for k := range s.Fixtures[i].Lamps {
+			g := &s.Fixtures[i].Lamps[k]
+			if g.Model == nil || g.Model.Key == (loading.Key{}) {
+				continue
+			}
+			if lamps[g.Model.Key] == nil {
+				lamps[g.Model.Key] = g.Model
+			}
+			g.Model = lamps[g.Model.Key]
+		}
+	}
 	if w.IntN(2) == 0 {
 		s.Pairings = map[loading.PairingKey]loading.Pairing{}
 		for range w.IntN(20) {

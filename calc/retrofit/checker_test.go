@@ -2,7 +2,10 @@ package retrofit
 
 import (
 	"encoding/json"
+	"fmt"
+	"maps"
 	"math"
+	"math/rand/v2"
 	"regexp"
 	"slices"
 	"strings"
@@ -322,5 +325,43 @@ func TestRanges(t *testing.T) {
 		if !(r.Lo < r.Hi) || math.IsInf(r.Hi, 0) || r.What == "" || !slices.Contains([]Mark{FromSource, FromStandard, FromPractice}, r.Mark) {
 			t.Errorf("%+v", r)
 		}
+	}
+}
+
+// TestOrderDoesNotMatter: the luminaires of a system in another order make the same findings.
+func TestOrderDoesNotMatter(t *testing.T) {
+	t.Parallel()
+	count := func(s *loading.System) map[string]int {
+		out := make(map[string]int)
+		for _, f := range Check(s).Findings {
+			out[fmt.Sprint(f.Rule, f.Severity, f.Blocks, f.Sureness, f.Lamps, f.Source)]++
+		}
+		return out
+	}
+	for seed := range uint64(500) {
+		s := wild{rand.New(rand.NewPCG(seed, 2))}.system()
+		for i := range s.Fixtures {
+			s.Fixtures[i].Controls = nil
+		}
+		before := count(s)
+		slices.Reverse(s.Fixtures)
+		if after := count(s); !maps.Equal(before, after) {
+			t.Fatalf("seed %d: %v, reversed %v", seed, before, after)
+		}
+	}
+}
+
+// TestMergeQuestions: questions about a model add up over systems, those about places stay apart.
+func TestMergeQuestions(t *testing.T) {
+	t.Parallel()
+	model := func(key byte, places int, s Severity) Question {
+		return Question{Field: FieldGearMinLoad, About: About{Kind: AboutGear, Key: loading.Key{key}, Index: -1}, Severity: s, Places: places}
+	}
+	place := func(key byte) Question {
+		return Question{Field: FieldDriverCable, About: About{Kind: string(OnDriver), Key: loading.Key{key}}, Severity: Low, Places: 1}
+	}
+	got := MergeQuestions([]Question{model(1, 3, Medium), place(7)}, []Question{model(2, 1, Medium), model(1, 4, High), place(8)})
+	if len(got) != 4 || got[0].About.Key != (loading.Key{1}) || got[0].Places != 7 || got[0].Severity != High {
+		t.Errorf("%+v", got)
 	}
 }

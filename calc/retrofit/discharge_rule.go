@@ -17,6 +17,7 @@ var dischargeRules = []Rule{
 		Cautions: []string{"CA-01", "CA-03", "CA-10"},
 		Asks:     []Field{FieldLampHIDGear, FieldFixtureConversion},
 		fixture:  ledInHIDFittingWithIgnitor,
+		only:     forDischarge,
 	},
 	{
 		ID: "heavy_lamp_in_hid_fitting", Severity: High, Blocks: true, Subject: OnFixture,
@@ -27,6 +28,7 @@ var dischargeRules = []Rule{
 		Cautions: []string{"CA-04", "CA-13"},
 		Asks:     []Field{FieldLampMass, FieldFittingMass},
 		fixture:  heavyLampInHIDFitting,
+		only:     forDischarge,
 	},
 }
 

@@ -13,6 +13,7 @@ var emergencyRules = []Rule{
 		Remedy:   "Use a kit tested with the luminaire, and make the full duration test.",
 		Cautions: []string{"CA-01", "CA-08", "CA-15"},
 		fixture:  emergencyFittingAltered,
+		only:     forEmergency,
 	},
 }
 

@@ -36,6 +36,7 @@ var protectionRules = []Rule{
 		Cautions: []string{"CA-01", "CA-12"},
 		Asks:     []Field{FieldFittingIP, FieldFittingClass, FieldFixtureZone, FieldFixtureModel},
 		fixture:  zoneUnsuitable,
+		only:     wet,
 	},
 }
 

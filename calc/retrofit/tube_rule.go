@@ -19,6 +19,7 @@ var tubeRules = []Rule{
 		Asks:     []Field{FieldFittingShunted, FieldFixtureShunted},
 		Hides:    []string{"tube_wiring_differs"},
 		fixture:  singleEndedTubeInShuntedHolders,
+		only:     tubes,
 	},
 	{
 		ID: "tube_wiring_differs", Severity: Danger, Blocks: true, Subject: OnFixture,
@@ -29,6 +30,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-01", "CA-06", "CA-10"},
 		Asks:     []Field{FieldFixtureFedEnds, FieldTubeWiring},
 		fixture:  tubeWiringDiffers,
+		only:     tubes,
 	},
 	{
 		ID: "converted_without_label", Severity: High, Subject: OnFixture,
@@ -39,6 +41,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-01", "CA-10"},
 		Asks:     []Field{FieldFixtureLabel},
 		fixture:  convertedWithoutLabel,
+		only:     rewired,
 	},
 	{
 		ID: "tube_gear_not_listed", Severity: High, Subject: OnFixture,
@@ -49,6 +52,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-01"},
 		Asks:     []Field{FieldPairing, FieldFixtureStarter, FieldTubeWiring},
 		fixture:  tubeGearNotListed,
+		only:     tubes,
 	},
 	{
 		ID: "conversion_papers_missing", Severity: Medium, Subject: OnFixture,
@@ -59,6 +63,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-10"},
 		Asks:     []Field{FieldFixturePapers},
 		fixture:  conversionPapersMissing,
+		only:     rewired,
 	},
 }
 

@@ -256,6 +256,11 @@ func TestCautions(t *testing.T) {
 			nfpa(fed(with(ballast(loading.MagneticBallast), func(g *loading.Gear) { g.MadeYear = some(1985) }), of(1, loading.Lamp{Technology: loading.Fluorescent})))(r)
 			return r
 		}, at, quiet, []string{"CA-03", "CA-06", "CA-09"}},
+		{"fluorescent on nobody knows what", func() *rig {
+			r := newRig()
+			r.Fixtures = append(r.Fixtures, loading.Fixture{Driver: -1, Circuit: -1, Lamps: []loading.LampGroup{of(1, loading.Lamp{Technology: loading.Fluorescent})}})
+			return r
+		}, at, quiet, []string{"CA-03", "CA-06", "CA-07", "CA-09"}},
 		{"emergency outdoors", func() *rig {
 			r := newRig()
 			r.straight(-1, nil, of(1, mainsLED(7, fixed)))
