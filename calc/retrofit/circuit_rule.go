@@ -357,6 +357,18 @@ func (v *circuitView) steadyVA() (va, w span) {
 	return va, w
 }
 
+// parts are all lamps of known power on a circuit.
+func (v *circuitView) parts() []loading.Part {
+	var all []loading.Part
+	for _, i := range v.drivers {
+		all = append(all, parts(v.by.driver[i].lamps, false)...)
+	}
+	for _, i := range v.fixtures {
+		all = append(all, parts(v.by.fixture[i].lamps, false)...)
+	}
+	return gathered(all)
+}
+
 // continuousShare is the share of a breaker that lighting, a load of 3 h and more, may use.
 func (v *circuitView) continuousShare() span {
 	switch {
@@ -400,7 +412,11 @@ func circuitOverloaded(v *circuitView) {
 		f := v.found(High, j)
 		f.say("This circuit %s %s; its breaker of %s may carry %s. Cable capacity not checked.", v.verb(1, "draws", "draw"), amount(amps, "A"),
 			quantity(rating, "A"), quantity(limit*rating, "A"))
-		f.step("power of the lamps", amount(w, "W"), "nameplate power")
+		sum := loading.SumWords(v.parts())
+		if !w.exact() {
+			sum = "at least " + sum
+		}
+		f.step("power of the lamps", sum, "nameplate power")
 		f.step("apparent power from the mains, losses and power factors counted", amount(va, "VA"), "input power over power factor")
 		per := quantity(volts, "V")
 		if phases == 3 {

@@ -94,7 +94,7 @@ func TestCircuitRules(t *testing.T) {
 			}, asks: []Field{FieldLampRatedV}},
 		},
 		"circuit_overloaded": {
-			{name: "16.1 A on 16 A", build: drivers(complete(), 31, d120, 100), findings: 1, severity: High, blocks: true, sure: Recorded, says: "16.12 / 16 = 100.8 %"},
+			{name: "16.1 A on 16 A", build: drivers(complete(), 31, d120, 100), findings: 1, severity: High, blocks: true, sure: Recorded, says: "31 × 100 W = 3100 W"},
 			{name: "15.6 A on 16 A", build: drivers(complete(), 30, d120, 100)},
 			// 40 W, 0.88, 0.95, 230 V: 0.208 A; 61 of them fit 80 % of 16 A, 62 do not.
 			{name: "61 fittings at 80 % of 16 A", build: nfpa(drivers(with(complete(), func(c *loading.CircuitFacts) { c.Listed100 = some(false) }), 61, d120, 40))},

@@ -166,6 +166,46 @@ func (s *dimmerLoad) onlyLED() bool {
 	return s.present[ledLoad] && !s.present[resistive] && !s.present[inductive] && !s.present[capacitive]
 }
 
+// classes counts the classes of load present.
+func (s *dimmerLoad) classes() int {
+	n := 0
+	for _, here := range s.present {
+		if here {
+			n++
+		}
+	}
+	return n
+}
+
+// forClass names the class a rating is for, where there is but one.
+func (s *dimmerLoad) forClass() string {
+	if s.classes() != 1 {
+		return ""
+	}
+	for c, here := range s.present {
+		if here {
+			return " for " + classWords[c]
+		}
+	}
+	return ""
+}
+
+// gathered joins lines of a sum that have the same power each, so that forty like luminaires are one line.
+func gathered(all []loading.Part) []loading.Part {
+	var out []loading.Part
+next:
+	for _, p := range all {
+		for i := range out {
+			if out[i].PowerW == p.PowerW {
+				out[i].Count += p.Count
+				continue next
+			}
+		}
+		out = append(out, p)
+	}
+	return out
+}
+
 // rating returns the dimmer's rating for a class, and what to ask for where none is on record. One figure printed beside
 // several letters of IEC 60669-2-1 is the rating for each of them.
 func (v *dimmerView) rating(c loadClass) (limit float64, ok bool, missing Field) {

@@ -258,8 +258,11 @@ func dimmerOverloaded(v *dimmerView) {
 	switch {
 	case j.fails:
 		f := v.found(High, j, s.lamps)
-		f.say("%s %s %s to %s of its rating.", capital(plural(s.lamps, "lamp")), v.verb(s.lamps, "loads", "load"), v.name(), loading.Percent(share.lo))
+		f.say("%s %s %s to %s of its rating%s.", capital(plural(s.lamps, "lamp")), v.verb(s.lamps, "loads", "load"), v.name(), loading.Percent(share.lo), s.forClass())
 		v.stepRatings(f, &s)
+		if s.classes() > 1 {
+			f.step("shares of all ratings together", loading.Percent(share.lo), v.by.rule.Basis)
+		}
 		return
 	case counted:
 		f := v.found(High, judgement{fails: true, sure: Recorded, excess: ratio(float64(s.leds), float64(*count))}, s.lamps)
@@ -319,17 +322,14 @@ func (v *dimmerView) stepRatings(f *Finding, s *dimmerLoad) {
 		if c == inductive {
 			unit = "VA"
 		}
-		sum := ""
+		var all []loading.Part
 		for i := range v.members {
 			if m := &v.members[i]; !m.signal() && v.memberClass(m, c) {
-				if sum != "" {
-					sum += "; "
-				}
-				sum += loading.SumWords(v.partsOf(m, c))
+				all = append(all, v.partsOf(m, c)...)
 			}
 		}
-		if sum != "" {
-			f.step("load of "+classWords[c], sum, "nameplate power of the lamps")
+		if len(all) > 0 {
+			f.step("load of "+classWords[c], loading.SumWords(gathered(all)), "nameplate power of the lamps")
 		}
 		f.step("load of "+classWords[c]+" against the rating, losses of gear included", amount(s.class[c], unit)+"; "+loading.Figure(s.class[c].lo)+" / "+
 			loading.Figure(limit)+" = "+loading.Percent(s.class[c].lo/limit), v.by.rule.Basis)
