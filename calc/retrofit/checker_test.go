@@ -301,7 +301,14 @@ func TestSentencesHaveNoClock(t *testing.T) {
 	t.Parallel()
 	text := func(hours float64, failures int) string {
 		r := newRig()
-		fed(transformer(60, 5), of(3, led12(7)))(r)
+		way := r.way(loading.CircuitFacts{NominalV: some(230.0), Curve: "B", RatingA: some(1.0)})
+		r.Circuits[way].TripsInYear = failures
+		r.gear(transformer(60, 5), way, nil, of(3, led12(7)))
+		contact := r.control(loading.Control{Kind: loading.Contactor}, way)
+		r.Dimmers[contact].WeldsInYear = failures
+		r.gear(wound(60), way, by(contact), of(2, halogen12(20)))
+		r.Drivers[1].FailuresInYear = failures
+		r.gear(ledDriver(60, fixed), way, nil, of(1, strip24(20)))
 		r.Fixtures[0].Lamps[0].HoursFitted = &hours
 		r.Fixtures[0].FailuresInYear = failures
 		b, err := json.Marshal(Check(&r.System).Findings)

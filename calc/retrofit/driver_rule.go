@@ -211,7 +211,7 @@ func (v *driverView) sayOverloaded(w *comparison) {
 	} else {
 		f.step("load, all lamps", sumOf(v.lamps, false, v.load.w), "nameplate power")
 	}
-	f.step("load against the maximum", loading.Figure(w.value.lo)+" / "+loading.Figure(w.limit)+" = "+loading.Percent(ratio(w.value.lo, w.limit)), v.by.rule.Basis)
+	f.step("load against the maximum", loading.Figure(w.value.lo)+" / "+loading.Figure(w.limit)+" = "+loading.Percent(w.value.lo/w.limit), v.by.rule.Basis)
 	if v.load.working < v.load.count {
 		f.step("load of the lamps believed working", sumOf(v.lamps, true, v.load.workingW), "open failures left out")
 	}

@@ -75,7 +75,7 @@ func exposedLiveParts(v *fixtureView) {
 
 func (v *fixtureView) sayUnapproved(l *lampLoad) {
 	f := v.foundLamp(l, Danger, certain)
-	f.say("%s %s no safety approval.", plural(l.count, "lamp"), v.verb(l.count, "carries", "carry"))
+	f.say("%s %s without a safety approval.", plural(l.count, "lamp"), are(l.count))
 	f.shows("lamp", "safety approval: none")
 }
 
@@ -121,7 +121,7 @@ func enclosedFittingLampNotRated(v *fixtureView) {
 			v.ask(FieldFittingEnclosed, aboutFitting(v.m))
 		case isNot(l.model.SuitableEnclosed):
 			f := v.foundLamp(l, High, certain)
-			f.say("%s %s marked against enclosed luminaires, and this one is enclosed.", plural(l.count, "lamp"), v.be(l.count))
+			f.say("%s %s marked against enclosed luminaires, and this one is enclosed.", plural(l.count, "lamp"), are(l.count))
 			f.shows("luminaire and lamp", "luminaire: enclosed; lamp for enclosed luminaires: no")
 		default:
 			v.ask(FieldLampEnclosed, aboutLamp(l.model))

@@ -216,7 +216,7 @@ func moduleOvercurrent(v *driverView) {
 		}
 		f := v.foundLamp(l, severity, j)
 		f.say("%s %s %s through each string; %s %s rated for at most %s.", capital(v.name()), v.verb(1, "sends", "send"),
-			amount(each, "mA"), plural(l.count, "module"), v.be(l.count), quantity(limit, "mA"))
+			amount(each, "mA"), plural(l.count, "module"), are(l.count), quantity(limit, "mA"))
 		f.Steps = loading.StringCurrentSteps(mA.lo, 100*(tol.lo-1), int(min(fewest.hi, 1e6)), limit, "current of one string against the module's maximum", v.by.rule.Basis)
 	}
 }
@@ -477,7 +477,7 @@ func stringOverDriverPower(v *driverView) {
 	f := v.found(High, j)
 	f.say("The modules %s %s from %s; it may give at most %s.", v.verb(2, "takes", "take"), amount(w, "W"), v.name(), quantity(limit, "W"))
 	f.step("running power of the strings", amount(mA, "mA")+" × "+amount(volts, "V")+" = "+amount(w, "W"), v.by.rule.Basis)
-	f.step("against the maximum", loading.Figure(w.lo)+" / "+loading.Figure(limit)+" = "+loading.Percent(ratio(w.lo, limit)), "maximum power of the driver")
+	f.step("against the maximum", loading.Figure(w.lo)+" / "+loading.Figure(limit)+" = "+loading.Percent(w.lo/limit), "maximum power of the driver")
 }
 
 func parallelStringCascade(v *driverView) {

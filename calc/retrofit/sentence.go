@@ -119,7 +119,11 @@ func parts(lamps []lampLoad, working bool) []loading.Part {
 
 // sumOf writes the sum of the lamps' power, W; "at least" where a part of it is unknown.
 func sumOf(lamps []lampLoad, working bool, w span) string {
-	s := loading.SumWords(parts(lamps, working))
+	known := parts(lamps, working)
+	if len(known) == 0 && !w.exact() {
+		return "not known"
+	}
+	s := loading.SumWords(known)
 	if !w.exact() {
 		return "at least " + s
 	}
@@ -139,10 +143,15 @@ func (v *view) verb(n int, one, many string) string {
 
 // be is "is", "are" or "would be".
 func (v *view) be(n int) string {
-	switch {
-	case v.proposed:
+	if v.proposed {
 		return "would be"
-	case n == 1:
+	}
+	return are(n)
+}
+
+// are is "is" or "are", of what holds whether or not anything is fitted.
+func are(n int) string {
+	if n == 1 {
 		return "is"
 	}
 	return "are"
