@@ -26,6 +26,7 @@ var outputRules = []Rule{
 		Hides:    []string{"lamp_overvoltage", "led_overvoltage_on_magnetic_transformer"},
 		driver:   outputVoltageMismatch,
 		fixture:  lowVoltageLampOnMains,
+		only:     straight,
 	},
 	{
 		ID: "dc_lamp_on_ac", Severity: High, Blocks: true, Subject: OnDriver,
@@ -48,6 +49,7 @@ var outputRules = []Rule{
 		Asks:     []Field{FieldLampSupply, FieldGearInputDC, FieldCircuitBattery},
 		driver:   acLoadOnDC,
 		fixture:  acLampOnDC,
+		only:     straight,
 	},
 	{
 		ID: "wound_transformer_on_dc", Severity: Danger, Blocks: true, Subject: OnDriver,

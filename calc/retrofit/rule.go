@@ -94,6 +94,7 @@ const (
 	forDischarge                   // made for discharge lamps, or on discharge gear
 	forEmergency                   // has an emergency function
 	wet                            // in a place that is not dry, or proposed
+	straight                       // on the circuit without control gear
 )
 
 // rules is the table; byDriver and so on are the entries that look at one level.

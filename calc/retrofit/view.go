@@ -263,6 +263,9 @@ func (v *fixtureView) traits() (t trait) {
 	if v.emergency() {
 		t |= forEmergency
 	}
+	if v.bare {
+		t |= straight
+	}
 	if v.proposed || v.f.Zone != "" && v.f.Zone != "dry" {
 		t |= wet
 	}
