@@ -108,14 +108,14 @@ func CapacitiveMA(nanofarad, voltV, hz float64) (float64, error) {
 	return 2 * math.Pi * hz * nanofarad * 1e-9 * voltV * 1000, nil
 }
 
-// RatingSteps shows a load against a control's rating, in the rating's unit (W, VA, A, lamps).
+// RatingSteps shows a load against a control's rating, in the rating's unit (W, VA, A, lamps). A rating of 0 has no
+// share.
 func RatingSteps(load, rating float64, unit, what, basis string) []Step {
-	return []Step{{
-		What: what,
-		Sum: Figure(load) + " " + unit + " against " + Figure(rating) + " " + unit + "; " + Figure(load) + " / " +
-			Figure(rating) + " = " + Percent(load/rating),
-		Basis: basis,
-	}}
+	sum := Figure(load) + " " + unit + " against " + Figure(rating) + " " + unit
+	if rating > 0 {
+		sum += "; " + Figure(load) + " / " + Figure(rating) + " = " + Percent(load/rating)
+	}
+	return []Step{{What: what, Sum: sum, Basis: basis}}
 }
 
 // WoundInputSteps shows what lamps on a wound transformer draw against a dimmer's VA rating.

@@ -20,7 +20,7 @@ var cableRules = []Rule{
 		Basis:    "IEC 60228 conductor resistance at 20 °C; 5 % of IEC 60364-7-715 clause 715.525, from memory",
 		Remedy:   "Thicker or shorter cable, gear nearer to the lamps, or 24 V.",
 		Cautions: []string{"CA-01"},
-		Asks:     []Field{FieldDriverCable, FieldDriverCableMM2, FieldDriverCableClass, FieldGearOutputV},
+		Asks:     []Field{FieldDriverCable, FieldDriverCableMM2, FieldDriverCableClass, FieldGearOutputV, FieldLampPower, FieldLampPowerFactor, FieldFixtureLamps},
 		driver:   outputVoltageDrop,
 	},
 	{
@@ -40,7 +40,7 @@ var cableRules = []Rule{
 		Basis:    "rating of cable and terminals; NFPA 70 article 411, from memory",
 		Remedy:   "Split the load, or fit thicker cable and larger terminals.",
 		Cautions: []string{"CA-01", "CA-02"},
-		Asks:     []Field{FieldDriverCableA, FieldGearOutputV},
+		Asks:     []Field{FieldDriverCableA, FieldGearOutputV, FieldLampPower, FieldLampPowerFactor, FieldFixtureLamps},
 		driver:   outputCableOverloaded,
 	},
 }

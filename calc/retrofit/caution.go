@@ -149,6 +149,11 @@ func placeOf(sys *loading.System, at Subject) place {
 		driver(f.Driver)
 		if !within(f.Driver, len(sys.Drivers)) && !f.GearNone {
 			p.storesCharge = true // nobody knows what gear is there
+			for _, g := range f.Lamps {
+				if class := classOf(g.Model); class == fluorescent || class == discharge || class == classUnknown {
+					p.pcb = true
+				}
+			}
 		}
 		circuit(f.Circuit)
 		controls(f.Controls)

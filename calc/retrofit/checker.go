@@ -148,8 +148,11 @@ func (c *Checker) sum() (line string, marked bool) {
 
 func (c *Checker) checkFixture(v *fixtureView) {
 	c.askLampsOf(v)
+	traits := v.traits()
 	for _, c.rule = range byFixture {
-		c.rule.fixture(v)
+		if c.rule.only == 0 || c.rule.only&traits != 0 {
+			c.rule.fixture(v)
+		}
 	}
 }
 
@@ -478,13 +481,16 @@ func (c *Checker) gatherDriver(i int, fixtures []int32) {
 		v.subject = Subject{OnFixture, f, c.sys.Fixtures[f].Key}
 		v.link.fixture = fixtures[0]
 	}
-	circuit := d.Circuit
+	circuit, own := d.Circuit, d.Circuit >= 0 && d.Circuit < len(c.sys.Circuits)
+	if !own {
+		circuit = -1
+	}
 	from := len(c.lamps)
 	groups := false
 	for _, fi := range fixtures {
 		f := &c.fixture[fi]
-		if circuit < 0 || circuit >= len(c.sys.Circuits) {
-			circuit = f.f.Circuit
+		if n := f.f.Circuit; !own && n >= 0 && n < len(c.sys.Circuits) && (circuit < 0 || n < circuit) {
+			circuit = n // nobody says what feeds the driver: its luminaires do
 		}
 		v.load.unseen = v.load.unseen || f.f.LampsUnknown
 		groups = groups || f.f.SwitchGroup != c.fixture[fixtures[0]].f.SwitchGroup

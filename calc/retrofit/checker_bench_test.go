@@ -86,6 +86,28 @@ func BenchmarkSixLampsInOneLuminaire(b *testing.B) {
 	}
 }
 
+// BenchmarkDriverUnread is the driver with six luminaires where half of what matters has not been read: it asks.
+func BenchmarkDriverUnread(b *testing.B) {
+	s := sixLampDriver()
+	d := &s.Drivers[0]
+	g := *d.Model
+	g.MinLoadW, g.InputMinV, g.OutputV = nil, nil, nil
+	d.Model, d.CableM, d.CableMM2 = &g, nil, nil
+	l := *s.Fixtures[0].Lamps[0].Model
+	l.Approval, l.SuitableEnclosed = nil, nil
+	for i := range s.Fixtures {
+		s.Fixtures[i].Lamps = []loading.LampGroup{{Model: &l, Count: 1}}
+	}
+	var c Checker
+	if r := c.Check(s); len(r.Questions) < 5 {
+		b.Fatalf("asked %v", r.Questions)
+	}
+	b.ReportAllocs()
+	for b.Loop() {
+		c.Check(s)
+	}
+}
+
 // BenchmarkEstate is 250,000 drivers with 1,000,000 luminaires in trees of 20, one in twenty trees with an overloaded
 // driver, on two goroutines.
 func BenchmarkEstate(b *testing.B) {

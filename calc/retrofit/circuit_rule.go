@@ -24,6 +24,7 @@ var circuitRules = []Rule{
 		Asks:     []Field{FieldGearInputV, FieldLampRatedV, FieldCircuitV},
 		driver:   gearOutsideInputRange,
 		fixture:  lampOutsideInputRange,
+		only:     straight,
 	},
 	{
 		ID: "circuit_overloaded", Severity: High, Blocks: true, Subject: OnCircuit,

@@ -238,7 +238,7 @@ func TestSwitchRules(t *testing.T) {
 			{name: "proposed on a plain switch and a C curve", build: proposed(transformers(plain, curveC))},
 			{name: "proposed on a plain switch and a B curve", build: proposed(transformers(plain, complete())), findings: 1, severity: Low, sure: Recorded, says: "B curve"},
 			{name: "installed behind a B curve", build: transformers(plain, complete())},
-			{name: "installed behind a B curve that tripped", build: tripped(transformers(plain, complete())), findings: 1, severity: Low, sure: Recorded, says: "2 trips"},
+			{name: "installed behind a B curve that tripped", build: tripped(transformers(plain, complete())), findings: 1, severity: Low, sure: Recorded, says: "1 or more"},
 			{name: "proposed, curve unknown", build: proposed(transformers(plain, with(complete(), func(c *loading.CircuitFacts) { c.Curve = "" }))), asks: []Field{FieldCircuitCurve}},
 		},
 	})

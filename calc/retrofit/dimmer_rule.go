@@ -207,7 +207,7 @@ func notDimmableOnDimmer(v *dimmerView) {
 			}
 			if a := acceptsOf(l.model.Dimming); a.nothing {
 				f := v.foundMember(m, l, High, certain)
-				f.say("%s of a model that is not dimmable %s on %s.", plural(l.count, l.class.word()), v.verb(l.count, "is", "are"), v.name())
+				f.say("%s of a model that is not dimmable %s on %s.", plural(l.count, l.class.word()), v.be(l.count), v.name())
 				f.step("marked for dimming", "none, on a "+controlWord(v.m)+" = no, even at full", matrixBasis)
 			} else if !a.known && l.class == led && m.driver != nil {
 				v.ask(FieldLampDimming, aboutLamp(l.model))
@@ -266,7 +266,7 @@ func dimmerOverloaded(v *dimmerView) {
 		return
 	case counted:
 		f := v.found(High, judgement{fails: true, sure: Recorded, excess: ratio(float64(s.leds), float64(*count))}, s.lamps)
-		f.say("%s %s on %s; it may carry at most %d.", capital(plural(s.leds, "LED lamp")), v.verb(s.leds, "is", "are"), v.name(), *count)
+		f.say("%s %s on %s; it may carry at most %d.", capital(plural(s.leds, "LED lamp")), v.be(s.leds), v.name(), *count)
 		f.Steps = append(f.Steps, loading.RatingSteps(float64(s.leds), float64(*count), "lamps", "lamps against the count on the dimmer", v.by.rule.Basis)...)
 		return
 	case peaked && exceeds(s.peakA, peak):
@@ -328,7 +328,9 @@ func (v *dimmerView) stepRatings(f *Finding, s *dimmerLoad) {
 				all = append(all, v.partsOf(m, c)...)
 			}
 		}
-		f.step("load of "+classWords[c], loading.SumWords(gathered(all)), "nameplate power of the lamps")
+		if len(all) > 0 {
+			f.step("load of "+classWords[c], loading.SumWords(gathered(all)), "nameplate power of the lamps")
+		}
 		f.step("load of "+classWords[c]+" against the rating, losses of gear included", amount(s.class[c], unit)+"; "+loading.Figure(s.class[c].lo)+" / "+
 			loading.Figure(limit)+" = "+loading.Percent(s.class[c].lo/limit), v.by.rule.Basis)
 	}
@@ -569,7 +571,7 @@ func mainsLEDOnUnmatchedDimmer(v *dimmerView) {
 				severity, words = Medium, "is marked dimmable without naming the edge"
 			}
 			f := v.foundMember(m, l, severity, certain)
-			f.say("%s on %s %s of a model that %s.", capital(plural(l.count, "mains LED lamp")), v.name(), v.verb(l.count, "is", "are"), words)
+			f.say("%s on %s %s of a model that %s.", capital(plural(l.count, "mains LED lamp")), v.name(), are(l.count), words)
 			f.step("lamp and dimmer", a.words()+" on a "+controlWord(v.m)+", no listed pair = conditional", matrixBasis)
 		}
 	}

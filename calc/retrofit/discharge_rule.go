@@ -17,6 +17,7 @@ var dischargeRules = []Rule{
 		Cautions: []string{"CA-01", "CA-03", "CA-10"},
 		Asks:     []Field{FieldLampHIDGear, FieldFixtureConversion},
 		fixture:  ledInHIDFittingWithIgnitor,
+		only:     forDischarge,
 	},
 	{
 		ID: "heavy_lamp_in_hid_fitting", Severity: High, Blocks: true, Subject: OnFixture,
@@ -27,6 +28,7 @@ var dischargeRules = []Rule{
 		Cautions: []string{"CA-04", "CA-13"},
 		Asks:     []Field{FieldLampMass, FieldFittingMass},
 		fixture:  heavyLampInHIDFitting,
+		only:     forDischarge,
 	},
 }
 
@@ -49,6 +51,7 @@ func ledInHIDFittingWithIgnitor(v *fixtureView) {
 		case !*l.model.HIDGearCompatible:
 			f := v.foundLamp(l, Danger, certain)
 			f.say("%s %s in a discharge luminaire with %s still in circuit.", plural(l.count, "LED lamp"), v.verb(l.count, "sits", "sit"), v.driver.kind.word())
+			f.shows("lamp and gear", "lamp made for discharge gear in circuit: no; gear in circuit: "+v.driver.kind.word())
 		}
 	}
 }
@@ -76,6 +79,7 @@ func heavyLampInHIDFitting(v *fixtureView) {
 		if l.model.Cap != "" && v.m.Cap != "" && !strings.EqualFold(l.model.Cap, v.m.Cap) {
 			f := v.foundLamp(l, High, certain)
 			f.say("%s with cap %s %s in a luminaire with %s holders.", plural(l.count, "lamp"), l.model.Cap, v.verb(l.count, "sits", "sit"), v.m.Cap)
+			f.shows("cap and holder", l.model.Cap+" against "+v.m.Cap)
 		}
 		mass, hasMass := positive(l.model.MassG)
 		if !hasLimit || !hasMass {

@@ -22,8 +22,10 @@ var driverLoadRules = []Rule{
 		Basis:    "IEC 61347-2-2 and IEC 61347-2-13; bands of severity are common practice",
 		Remedy:   "Cut the load, or fit gear with a larger rating.",
 		Cautions: []string{"CA-01", "CA-02", "CA-03"},
-		Asks:     []Field{FieldGearMaxLoad, FieldGearLEDMaxLoad, FieldLampPower, FieldLampPowerFactor, FieldFixtureLamps, FieldFixtureOutput, FieldGearThermal},
-		driver:   driverOverloaded,
+		// The first line is its own; the rest are what every rule waits for, asked in its name.
+		Asks: []Field{FieldGearMaxLoad, FieldGearLEDMaxLoad, FieldLampPower, FieldLampPowerFactor, FieldFixtureLamps, FieldFixtureOutput, FieldGearOutputMaxW, FieldGearThermal,
+			FieldGearKind, FieldDriverModel, FieldFixtureFeed, FieldFittingGear, FieldFittingDriver, FieldFixtureConversion, FieldLampTechnology, FieldLampSupply},
+		driver: driverOverloaded,
 	},
 	{
 		ID: "driver_underloaded", Severity: Medium, Subject: OnDriver,
@@ -53,7 +55,7 @@ var driverLoadRules = []Rule{
 		Basis:    heatMarks + "; derating curve of the data sheet",
 		Remedy:   "Ventilate, reduce the load, or move the gear to a cooler place.",
 		Cautions: []string{"CA-01", "CA-02", "CA-03"},
-		Asks:     []Field{FieldDriverAir, FieldGearTa, FieldGearTc, FieldGearMaxLoad},
+		Asks:     []Field{FieldDriverAir, FieldGearTa, FieldGearTc, FieldGearMaxLoad, FieldLampPower, FieldFixtureLamps},
 		driver:   driverTooHot,
 	},
 	{
@@ -63,7 +65,7 @@ var driverLoadRules = []Rule{
 		Basis:    "80 % is common practice of the trade",
 		Remedy:   "Choose a driver with a larger rating.",
 		Cautions: []string{"CA-01"},
-		Asks:     []Field{FieldGearMaxLoad, FieldLampPower, FieldFixtureLamps},
+		Asks:     []Field{FieldGearMaxLoad, FieldLampPower, FieldFixtureLamps, FieldFixtureOutput},
 		driver:   driverHighlyLoaded,
 	},
 }
@@ -209,7 +211,7 @@ func (v *driverView) sayOverloaded(w *comparison) {
 	} else {
 		f.step("load, all lamps", sumOf(v.lamps, false, v.load.w), "nameplate power")
 	}
-	f.step("load against the maximum", loading.Figure(w.value.lo)+" / "+loading.Figure(w.limit)+" = "+loading.Percent(ratio(w.value.lo, w.limit)), v.by.rule.Basis)
+	f.step("load against the maximum", loading.Figure(w.value.lo)+" / "+loading.Figure(w.limit)+" = "+loading.Percent(w.value.lo/w.limit), v.by.rule.Basis)
 	if v.load.working < v.load.count {
 		f.step("load of the lamps believed working", sumOf(v.lamps, true, v.load.workingW), "open failures left out")
 	}

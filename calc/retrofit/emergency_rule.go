@@ -13,6 +13,7 @@ var emergencyRules = []Rule{
 		Remedy:   "Use a kit tested with the luminaire, and make the full duration test.",
 		Cautions: []string{"CA-01", "CA-08", "CA-15"},
 		fixture:  emergencyFittingAltered,
+		only:     forEmergency,
 	},
 }
 
@@ -39,6 +40,7 @@ func emergencyFittingAltered(v *fixtureView) {
 				f.ofLamp(l.model)
 			}
 			f.say("The %s of this emergency luminaire %s not the one it was tested with, and nobody lists the change.", what, v.be(1))
+			f.shows("now against the function test", what+": not as tested; pair listed: no")
 			return
 		}
 	}
@@ -47,8 +49,10 @@ func emergencyFittingAltered(v *fixtureView) {
 		f.Blocks = false
 		if v.proposed {
 			f.say("Changing this emergency luminaire asks for a function test before it is relied on.")
+			f.shows("function test", "to be logged after the change")
 		} else {
 			f.say("This emergency luminaire was changed after its last function test.")
+			f.shows("function test", "none logged after the change")
 		}
 	}
 }

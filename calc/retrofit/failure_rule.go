@@ -18,6 +18,7 @@ func repeatFailure(v *fixtureView) {
 	if v.f.FailuresInYear >= 2 {
 		f := v.found(Medium, certain)
 		f.say("One holder of this luminaire had at least two failures within %d months.", FailureMonths)
+		f.shows("failures on record", "2 or more in one holder")
 	}
 }
 
@@ -25,5 +26,6 @@ func repeatGearFailure(v *driverView) {
 	if v.d.FailuresInYear >= 2 {
 		f := v.found(Medium, certain)
 		f.say("The gear in this place failed at least twice within %d months.", FailureMonths)
+		f.shows("failures on record", "2 or more of the gear")
 	}
 }

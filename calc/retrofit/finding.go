@@ -143,6 +143,34 @@ func SortQuestions(q []Question) {
 	})
 }
 
+// MergeQuestions makes one list of the questions of many systems: places of the same model, or the same place, add up.
+func MergeQuestions(lists ...[]Question) []Question {
+	at := make(map[questionKey]int)
+	var out []Question
+	for _, list := range lists {
+		for _, q := range list {
+			k := questionKey{q.Field, q.About}
+			if q.About.Key != (loading.Key{}) {
+				k.about.Index = 0 // a place has another index in another system
+			}
+			n, ok := at[k]
+			if !ok {
+				at[k] = len(out)
+				out = append(out, q)
+				continue
+			}
+			m := &out[n]
+			m.Places += q.Places
+			if q.Severity.Rank() > m.Severity.Rank() {
+				m.Severity, m.Rule = q.Severity, q.Rule
+			}
+			m.Blocks, m.Proposed = m.Blocks || q.Blocks, m.Proposed || q.Proposed
+		}
+	}
+	SortQuestions(out)
+	return out
+}
+
 // A Cause is one group of findings with the same rule, lamp, gear and control.
 type Cause struct {
 	Rule     string      `json:"rule"`

@@ -54,6 +54,7 @@ func exposedLiveParts(v *fixtureView) {
 	if is(v.f.TouchableLive) {
 		f := v.found(Danger, certain)
 		f.say("Live parts of this luminaire can be touched.")
+		f.shows("seen on site", "touchable live parts: yes")
 	}
 	for i := range v.lamps {
 		l := &v.lamps[i]
@@ -74,7 +75,8 @@ func exposedLiveParts(v *fixtureView) {
 
 func (v *fixtureView) sayUnapproved(l *lampLoad) {
 	f := v.foundLamp(l, Danger, certain)
-	f.say("%s %s no safety approval.", plural(l.count, "lamp"), v.verb(l.count, "carries", "carry"))
+	f.say("%s %s without a safety approval.", plural(l.count, "lamp"), are(l.count))
+	f.shows("lamp", "safety approval: none")
 }
 
 func exposedLiveOutput(v *driverView) {
@@ -85,6 +87,7 @@ func exposedLiveOutput(v *driverView) {
 	case "none":
 		f := v.found(Danger, certain)
 		f.say("Live parts of the output of %s can be touched, and it has no separation from the mains.", v.name())
+		f.shows("output", "touchable live parts: yes; separation: none")
 	case "":
 		if v.d.Model != nil {
 			v.ask(FieldGearSeparation, aboutGear(v.g))
@@ -118,12 +121,14 @@ func enclosedFittingLampNotRated(v *fixtureView) {
 			v.ask(FieldFittingEnclosed, aboutFitting(v.m))
 		case isNot(l.model.SuitableEnclosed):
 			f := v.foundLamp(l, High, certain)
-			f.say("%s %s marked against enclosed luminaires, and this one is enclosed.", plural(l.count, "lamp"), v.be(l.count))
+			f.say("%s %s marked against enclosed luminaires, and this one is enclosed.", plural(l.count, "lamp"), are(l.count))
+			f.shows("luminaire and lamp", "luminaire: enclosed; lamp for enclosed luminaires: no")
 		default:
 			v.ask(FieldLampEnclosed, aboutLamp(l.model))
 			f := v.foundLamp(l, Medium, certain)
 			f.Blocks = false
 			f.say("%s %s in an enclosed luminaire; nothing says that this lamp is made for that.", plural(l.count, "lamp"), v.verb(l.count, "sits", "sit"))
+			f.shows("luminaire and lamp", "luminaire: enclosed; lamp for enclosed luminaires: not stated")
 		}
 	}
 }
@@ -180,6 +185,7 @@ func insulationOverFitting(v *fixtureView) {
 	}
 	f := v.found(severity, certain)
 	f.say("Insulation or a hood lies over this luminaire, which is not marked for it.")
+	f.shows("seen on site", "insulation or hood over it: yes; marked for that: no")
 }
 
 func insulationOverGear(v *driverView) {
@@ -192,4 +198,5 @@ func insulationOverGear(v *driverView) {
 	}
 	f := v.found(severity, certain)
 	f.say("Insulation or a hood lies over %s, which is not marked for it.", v.name())
+	f.shows("seen on site", "insulation or hood over it: yes; marked for that: no")
 }

@@ -42,7 +42,7 @@ func circuitInrush(v *circuitView) {
 	}
 	f.say("%s switched on together %s %s of %s.", capital(plural(s.gears, "gear")), v.verb(s.gears, "takes", "take"), loading.Percent(s.share), what)
 	if v.c.TripsInYear > 0 {
-		f.step("trips in the last 12 months", plural(v.c.TripsInYear, "trip"), "recorded on site")
+		f.step("trips in the last 12 months", "1 or more", "recorded on site")
 	}
 	f.Steps = append(f.Steps, s.steps...)
 }

@@ -65,7 +65,7 @@ var moduleRules = []Rule{
 		Basis:    "maximum power of the driver; running voltage with a bin of 5 %, from memory of data sheets",
 		Remedy:   "Fit a larger driver, or fewer modules.",
 		Cautions: []string{"CA-01", "CA-03"},
-		Asks:     []Field{FieldGearMaxLoad, FieldForwardV, FieldDriverSetMA, FieldGearOutputMA, FieldFixtureStrings, FieldFixtureLamps},
+		Asks:     []Field{FieldGearMaxLoad, FieldForwardV, FieldDriverSetMA, FieldGearOutputMA, FieldFixtureStrings, FieldFixtureLamps, FieldFixtureOutput},
 		driver:   stringOverDriverPower,
 	},
 	{
@@ -216,7 +216,7 @@ func moduleOvercurrent(v *driverView) {
 		}
 		f := v.foundLamp(l, severity, j)
 		f.say("%s %s %s through each string; %s %s rated for at most %s.", capital(v.name()), v.verb(1, "sends", "send"),
-			amount(each, "mA"), plural(l.count, "module"), v.be(l.count), quantity(limit, "mA"))
+			amount(each, "mA"), plural(l.count, "module"), are(l.count), quantity(limit, "mA"))
 		f.Steps = loading.StringCurrentSteps(mA.lo, 100*(tol.lo-1), int(min(fewest.hi, 1e6)), limit, "current of one string against the module's maximum", v.by.rule.Basis)
 	}
 }
@@ -259,6 +259,7 @@ func moduleUndercurrent(v *driverView) {
 
 // A stringView is all that hangs in series on one output of a constant-current driver.
 type stringView struct {
+	output          int  // of several; 0 where there is one
 	modules         span // in series
 	hot, cold, run  span // V
 	unseen          bool // lamps nobody has looked at
@@ -284,6 +285,9 @@ func (v *driverView) eachString(f func(s *stringView)) {
 			continue
 		}
 		var s stringView
+		if several {
+			s.output = n
+		}
 		any := false
 		for _, other := range v.fixtures[at:] {
 			x := &v.by.fixture[other]
@@ -358,7 +362,7 @@ func (v *driverView) askString(s *stringView, missing bool, f Field) {
 		v.askStrings()
 	}
 	if s.unseen {
-		v.askLamps()
+		v.askLampsOf(v.fixtures, nil)
 	}
 }
 
@@ -473,7 +477,7 @@ func stringOverDriverPower(v *driverView) {
 	f := v.found(High, j)
 	f.say("The modules %s %s from %s; it may give at most %s.", v.verb(2, "takes", "take"), amount(w, "W"), v.name(), quantity(limit, "W"))
 	f.step("running power of the strings", amount(mA, "mA")+" × "+amount(volts, "V")+" = "+amount(w, "W"), v.by.rule.Basis)
-	f.step("against the maximum", loading.Figure(w.lo)+" / "+loading.Figure(limit)+" = "+loading.Percent(ratio(w.lo, limit)), "maximum power of the driver")
+	f.step("against the maximum", loading.Figure(w.lo)+" / "+loading.Figure(limit)+" = "+loading.Percent(w.lo/limit), "maximum power of the driver")
 }
 
 func parallelStringCascade(v *driverView) {

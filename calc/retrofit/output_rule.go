@@ -26,6 +26,7 @@ var outputRules = []Rule{
 		Hides:    []string{"lamp_overvoltage", "led_overvoltage_on_magnetic_transformer"},
 		driver:   outputVoltageMismatch,
 		fixture:  lowVoltageLampOnMains,
+		only:     straight,
 	},
 	{
 		ID: "dc_lamp_on_ac", Severity: High, Blocks: true, Subject: OnDriver,
@@ -48,6 +49,7 @@ var outputRules = []Rule{
 		Asks:     []Field{FieldLampSupply, FieldGearInputDC, FieldCircuitBattery},
 		driver:   acLoadOnDC,
 		fixture:  acLampOnDC,
+		only:     straight,
 	},
 	{
 		ID: "wound_transformer_on_dc", Severity: Danger, Blocks: true, Subject: OnDriver,
@@ -323,6 +325,7 @@ func dcLampOnAC(v *driverView) {
 		case loading.SupplyELVDC:
 			f := v.foundLamp(l, High, certain)
 			f.say("%s for dc only %s on %s, whose output is ac at the mains frequency.", plural(l.count, "LED lamp"), v.verb(l.count, "hangs", "hang"), v.name())
+			f.shows("lamp and output", "lamp: extra-low voltage dc; output: ac at the mains frequency")
 			if out, ok := positive(v.g.OutputV); ok {
 				if dc, err := loading.SmoothedDCV(out); err == nil {
 					f.step("that voltage rectified and smoothed", "√2 × "+quantity(out, "V")+" − 1.4 V = "+quantity(dc, "V")+" dc", "peak of a sine less two diodes of 0.7 V")
@@ -365,6 +368,7 @@ func acLoadOnDC(v *driverView) {
 			case l.model.Supply == loading.SupplyELVAC:
 				f := v.foundLamp(l, Medium, certain)
 				f.say("%s for ac only %s on %s, whose output is dc.", plural(l.count, "lamp"), v.verb(l.count, "hangs", "hang"), v.name())
+				f.shows("lamp and output", "lamp: extra-low voltage ac; output: dc")
 			}
 		}
 	}
@@ -375,6 +379,7 @@ func acLoadOnDC(v *driverView) {
 	case isNot(v.g.InputDC):
 		f := v.found(Medium, certain)
 		f.say("A central battery feeds %s with dc; it is not made for a dc input.", v.name())
+		f.shows("circuit and gear", "central battery: dc; dc input of the gear: no")
 	case v.g.InputDC == nil:
 		v.ask(FieldGearInputDC, aboutGear(v.g))
 	}
@@ -382,6 +387,7 @@ func acLoadOnDC(v *driverView) {
 		f := v.found(Medium, certain)
 		f.Control = m.Key
 		f.say("A phase-cut dimmer stands before %s on a circuit that a central battery feeds with dc; it does not turn off on dc.", v.name())
+		f.shows("circuit and dimmer", "central battery: dc; dimmer: phase-cut")
 	}
 }
 
@@ -409,6 +415,7 @@ func acLampOnDC(v *fixtureView) {
 		}
 		f := v.foundLamp(l, Medium, certain)
 		f.say("%s for ac mains %s on a circuit that a central battery feeds with dc.", plural(l.count, "lamp"), v.verb(l.count, "hangs", "hang"))
+		f.shows("circuit and lamp", "central battery: dc; lamp: ac mains")
 	}
 }
 
@@ -418,6 +425,7 @@ func woundTransformerOnDC(v *driverView) {
 	}
 	f := v.found(Danger, certain)
 	f.say("A central battery feeds %s with dc; its core saturates and only the winding limits the current.", v.name())
+	f.shows("circuit and gear", "central battery: dc; gear: "+v.kind.word())
 }
 
 func reversedPolarity(v *driverView) {
@@ -435,6 +443,7 @@ func reversedPolarity(v *driverView) {
 		case !is(l.model.Bridge):
 			f := v.foundLamp(l, High, certain)
 			f.say("The output of %s is recorded reversed; %s without a bridge %s on it.", v.name(), plural(l.count, "LED module"), v.verb(l.count, "hangs", "hang"))
+			f.shows("output and lamp", "polarity: reversed; bridge in the lamp: none")
 		}
 	}
 }
@@ -452,6 +461,7 @@ func currentModuleOnVoltageSupply(v *driverView) {
 		case l.model.Supply == loading.SupplyConstantCurrent:
 			f := v.foundLamp(l, High, certain)
 			f.say("%s for constant current %s on %s, which holds its voltage.", plural(l.count, "module"), v.verb(l.count, "hangs", "hang"), v.name())
+			f.shows("lamp and gear", "lamp: constant current; gear: constant voltage")
 		case l.model.Supply == "" && l.model.Technology == loading.LEDModule:
 			v.ask(FieldLampSupply, aboutLamp(l.model))
 		}
@@ -471,6 +481,7 @@ func voltageStripOnCurrentSupply(v *driverView) {
 		case loading.SupplyELVAC, loading.SupplyELVDC, loading.SupplyELVACDC, loading.SupplyMainsAC:
 			f := v.foundLamp(l, High, certain)
 			f.say("%s for a constant voltage %s on %s.", plural(l.count, "lamp"), v.verb(l.count, "hangs", "hang"), v.name())
+			f.shows("lamp and gear", "lamp: constant voltage; gear: constant current")
 			if most, ok := positive(v.g.ComplianceMaxV); ok {
 				if rated, ok := positive(l.model.RatedV); ok {
 					f.step("highest voltage of the driver against the lamp", quantity(most, "V")+" against "+quantity(rated, "V"), "nameplates")

@@ -24,7 +24,7 @@ var protectionRules = []Rule{
 		Basis:    "class I of IEC 61140; recorded on site",
 		Remedy:   "Restore the earth and prove it.",
 		Cautions: []string{"CA-01"},
-		Asks:     []Field{FieldFixtureEarth, FieldFittingClass},
+		Asks:     []Field{FieldFixtureEarth, FieldFittingClass, FieldFixtureModel},
 		fixture:  earthLost,
 	},
 	{
@@ -34,8 +34,9 @@ var protectionRules = []Rule{
 		Basis:    "IEC 60364-7-701 and -702, from memory; damp, wet and outdoor places by common practice",
 		Remedy:   "Fit a luminaire suitable for the zone.",
 		Cautions: []string{"CA-01", "CA-12"},
-		Asks:     []Field{FieldFittingIP, FieldFittingClass, FieldFixtureZone},
+		Asks:     []Field{FieldFittingIP, FieldFittingClass, FieldFixtureZone, FieldFixtureModel},
 		fixture:  zoneUnsuitable,
+		only:     wet,
 	},
 }
 
@@ -53,6 +54,7 @@ func isolationLost(v *driverView) {
 	if isNot(v.d.Segregated) {
 		f := v.found(Danger, certain)
 		f.say("Mains and the output of %s are not kept apart.", v.name())
+		f.shows("seen on site", "mains and extra-low voltage kept apart: no")
 	}
 	if v.d.Model == nil {
 		return
@@ -66,6 +68,7 @@ func isolationLost(v *driverView) {
 	case lost && can:
 		f := v.found(Danger, certain)
 		f.say("The gear before had its output separated from the mains; %s has not, and live parts of it can be touched.", v.name())
+		f.shows("separation", "before: "+v.d.SeparationBefore+"; now: none; touchable live parts: yes")
 	case high && can:
 		f := v.found(Danger, certain)
 		f.say("The output of %s reaches %s dc without load, above %s, and live parts of it can be touched.", v.name(), quantity(highest, "V"), quantity(loading.SELVNoLoadDCV, "V"))
@@ -84,6 +87,7 @@ func earthLost(v *fixtureView) {
 	case isNot(v.f.Earth) && v.m.Class == "I":
 		f := v.found(Danger, certain)
 		f.say("This class I luminaire is recorded without its protective earth.")
+		f.shows("luminaire", "class: I; protective earth: not connected")
 	case isNot(v.f.Earth) && v.m.Class == "" && v.f.Model != nil:
 		v.ask(FieldFittingClass, aboutFitting(v.m))
 	case isNot(v.f.Earth) && v.f.Model == nil:
@@ -182,5 +186,6 @@ func zoneUnsuitable(v *fixtureView) {
 	default:
 		f := v.found(severity, certain)
 		f.say("A class %s luminaire hangs in zone %s, where only SELV of class III is allowed.", v.m.Class, v.f.Zone)
+		f.shows("luminaire and zone", "class: "+v.m.Class+"; zone "+v.f.Zone+": class III")
 	}
 }

@@ -79,9 +79,23 @@ type Rule struct {
 	dimmer  func(*dimmerView)
 	circuit func(*circuitView)
 
+	only trait // luminaires it can concern, by any of these traits; 0: all
+
 	number int    // place in the table
 	hides  uint64 // rules hidden, by number
 }
+
+// A trait is something few luminaires have; rules that concern only these skip the rest.
+type trait uint8
+
+const (
+	tubes        trait = 1 << iota // holds tubes or fluorescent lamps
+	rewired                        // its gear was bypassed, removed or replaced by a driver of its own
+	forDischarge                   // made for discharge lamps, or on discharge gear
+	forEmergency                   // has an emergency function
+	wet                            // in a place that is not dry, or proposed
+	straight                       // on the circuit without control gear
+)
 
 // rules is the table; byDriver and so on are the entries that look at one level.
 var (

@@ -16,6 +16,9 @@ func (f *Finding) step(what, sum, basis string) {
 	f.Steps = append(f.Steps, loading.Step{What: what, Sum: sum, Basis: basis})
 }
 
+// shows adds what is on record as the step of a finding that has no arithmetic.
+func (f *Finding) shows(what, sum string) { f.step(what, sum, "the record") }
+
 // screens turns a finding into one against a rule of thumb: low, and it refuses nothing.
 func (f *Finding) screens() {
 	f.Severity, f.Sureness, f.Blocks = Low, Screening, false
@@ -116,7 +119,11 @@ func parts(lamps []lampLoad, working bool) []loading.Part {
 
 // sumOf writes the sum of the lamps' power, W; "at least" where a part of it is unknown.
 func sumOf(lamps []lampLoad, working bool, w span) string {
-	s := loading.SumWords(parts(lamps, working))
+	known := parts(lamps, working)
+	if len(known) == 0 && !w.exact() {
+		return "not known"
+	}
+	s := loading.SumWords(known)
 	if !w.exact() {
 		return "at least " + s
 	}
@@ -136,10 +143,15 @@ func (v *view) verb(n int, one, many string) string {
 
 // be is "is", "are" or "would be".
 func (v *view) be(n int) string {
-	switch {
-	case v.proposed:
+	if v.proposed {
 		return "would be"
-	case n == 1:
+	}
+	return are(n)
+}
+
+// are is "is" or "are", of what holds whether or not anything is fitted.
+func are(n int) string {
+	if n == 1 {
 		return "is"
 	}
 	return "are"
@@ -287,23 +299,7 @@ func (v *circuitView) aboutPlace() About {
 
 // askLamps asks for what keeps the sum of a driver's lamps from being known: lamps nobody has looked at, power
 // nobody has read.
-func (v *driverView) askLamps() {
-	for _, i := range v.fixtures {
-		x := &v.by.fixture[i]
-		unseen := x.f.LampsUnknown
-		for j := range x.lamps {
-			unseen = unseen || x.lamps[j].model == nil
-		}
-		if unseen {
-			v.ask(FieldFixtureLamps, x.aboutPlace())
-		}
-	}
-	for i := range v.lamps {
-		if l := &v.lamps[i]; l.model != nil && !l.known {
-			v.ask(FieldLampPower, aboutLamp(l.model))
-		}
-	}
-}
+func (v *driverView) askLamps() { v.askLampsOf(v.fixtures, v.lamps) }
 
 // askPowerFactors asks for the power factors that keep the apparent power of a driver's lamps from being known.
 func (v *driverView) askPowerFactors() {

@@ -248,7 +248,7 @@ func transformerInrushOnSwitch(v *dimmerView) {
 	f := v.found(Low, certain, lamps)
 	f.say("%s switches %s, whose cores take many times their rated current at switch-on.", capital(v.name()), plural(n, "magnetic transformer"))
 	if welded {
-		f.step("contacts welded in the last 12 months", plural(v.d.WeldsInYear, "failure"), "recorded on site")
+		f.step("contacts welded in the last 12 months", "1 or more", "recorded on site")
 	} else {
 		f.step("transformers on this contact", plural(n, "magnetic transformer"), v.by.rule.Basis)
 	}
@@ -275,9 +275,9 @@ func transformerInrushOnBreaker(v *circuitView) {
 	}
 	f := v.found(Low, certain)
 	f.Lamps = lamps
-	f.say("%s %s behind a B curve breaker, which may trip from 3 times its rating.", capital(plural(n, "magnetic transformer")), v.verb(n, "is", "are"))
+	f.say("%s %s behind a B curve breaker, which may trip from 3 times its rating.", capital(plural(n, "magnetic transformer")), v.be(n))
 	if v.c.TripsInYear > 0 {
-		f.step("trips in the last 12 months", plural(v.c.TripsInYear, "trip"), "recorded on site")
+		f.step("trips in the last 12 months", "1 or more", "recorded on site")
 	}
 	f.step("transformers behind a B curve", plural(n, "magnetic transformer"), "B curve: 3 to 5 times the rating at once, IEC 60898-1; "+v.by.rule.Basis)
 }

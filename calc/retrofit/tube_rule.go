@@ -2,6 +2,7 @@ package retrofit
 
 import (
 	"reflect"
+	"strings"
 
 	"lampward/calc/loading"
 )
@@ -18,6 +19,7 @@ var tubeRules = []Rule{
 		Asks:     []Field{FieldFittingShunted, FieldFixtureShunted},
 		Hides:    []string{"tube_wiring_differs"},
 		fixture:  singleEndedTubeInShuntedHolders,
+		only:     tubes,
 	},
 	{
 		ID: "tube_wiring_differs", Severity: Danger, Blocks: true, Subject: OnFixture,
@@ -28,6 +30,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-01", "CA-06", "CA-10"},
 		Asks:     []Field{FieldFixtureFedEnds, FieldTubeWiring},
 		fixture:  tubeWiringDiffers,
+		only:     tubes,
 	},
 	{
 		ID: "converted_without_label", Severity: High, Subject: OnFixture,
@@ -38,6 +41,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-01", "CA-10"},
 		Asks:     []Field{FieldFixtureLabel},
 		fixture:  convertedWithoutLabel,
+		only:     rewired,
 	},
 	{
 		ID: "tube_gear_not_listed", Severity: High, Subject: OnFixture,
@@ -48,6 +52,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-01"},
 		Asks:     []Field{FieldPairing, FieldFixtureStarter, FieldTubeWiring},
 		fixture:  tubeGearNotListed,
+		only:     tubes,
 	},
 	{
 		ID: "conversion_papers_missing", Severity: Medium, Subject: OnFixture,
@@ -58,6 +63,7 @@ var tubeRules = []Rule{
 		Cautions: []string{"CA-10"},
 		Asks:     []Field{FieldFixturePapers},
 		fixture:  conversionPapersMissing,
+		only:     rewired,
 	},
 }
 
@@ -115,6 +121,7 @@ func singleEndedTubeInShuntedHolders(v *fixtureView) {
 		case is(shunted):
 			f := v.foundLamp(l, Danger, certain)
 			f.say("%s fed at one end %s in holders whose contacts are joined: a dead short on the mains.", plural(l.count, "tube"), v.verb(l.count, "sits", "sit"))
+			f.shows("tube and holders", "tube: fed at one end; holder contacts: joined")
 		case shunted == nil && v.f.Model != nil:
 			v.ask(FieldFittingShunted, aboutFitting(v.m))
 		case shunted == nil:
@@ -157,6 +164,7 @@ func tubeWiringDiffers(v *fixtureView) {
 		default:
 			f := v.foundLamp(l, Danger, certain)
 			f.say("%s %s %s in a luminaire wired %s.", plural(l.count, tube), needWords[need], v.verb(l.count, "sits", "sit"), fedWords[fed])
+			f.shows("tube and wiring", "tube: "+needWords[need]+"; luminaire wired "+fedWords[fed])
 		}
 	}
 }
@@ -179,6 +187,7 @@ func convertedWithoutLabel(v *fixtureView) {
 	case !*v.f.ConversionLabel:
 		f := v.found(High, certain)
 		f.say("The gear of this luminaire was bypassed or removed, and no label says so.")
+		f.shows("luminaire", "conversion: "+strings.ReplaceAll(v.f.Conversion, "_", " ")+"; label: none")
 	}
 }
 
@@ -196,10 +205,12 @@ func tubeGearNotListed(v *fixtureView) {
 		case !wound && isNot(l.model.HighFrequency):
 			f := v.foundLamp(l, High, certain)
 			f.say("%s for wound ballasts %s on an electronic ballast.", plural(l.count, "LED tube"), v.verb(l.count, "hangs", "hang"))
+			f.shows("tube and ballast", "tube for high frequency: no; ballast: electronic")
 			continue
 		case wound && (v.f.Starter == "glow" || v.f.Starter == "electronic"):
 			f := v.foundLamp(l, High, certain)
 			f.say("%s %s with the starter of a fluorescent lamp; it takes a dummy starter.", plural(l.count, "LED tube"), v.verb(l.count, "works", "work"))
+			f.shows("tube and starter", "tube: LED, fed by the ballast; starter: "+v.f.Starter)
 			continue
 		case wound && v.f.Starter == "":
 			v.ask(FieldFixtureStarter, v.aboutPlace())
@@ -213,6 +224,7 @@ func tubeGearNotListed(v *fixtureView) {
 		if l.model.Key != (loading.Key{}) && v.by.lists(l.model.Key) {
 			f := v.foundLamp(l, High, certain)
 			f.say("%s %s on %s, which is not on the tube's list of ballasts.", plural(l.count, "LED tube"), v.verb(l.count, "hangs", "hang"), v.driver.name())
+			f.shows("tube and ballast", "ballasts are listed for this tube; this one is not among them")
 			continue
 		}
 		v.ask(FieldPairing, About{Kind: AboutPairing, Key: l.model.Key, With: v.driver.g.Key, Index: -1, Name: l.model.Name})
@@ -250,5 +262,6 @@ func conversionPapersMissing(v *fixtureView) {
 	case !*v.f.ConversionPaper:
 		f := v.found(severity, certain)
 		f.say("This luminaire was rewired, and %s is not on file.", what)
+		f.shows("luminaire", "conversion: "+strings.ReplaceAll(v.f.Conversion, "_", " ")+"; papers: none")
 	}
 }

@@ -48,7 +48,8 @@ func Verdict(before, after Result) Advice {
 		}
 	}
 	slices.SortStableFunc(a.Findings, func(x, y Finding) int {
-		return cmp.Or(boolCompare(y.Blocks, x.Blocks), cmp.Compare(Weight(y.Severity, y.Lamps), Weight(x.Severity, x.Lamps)))
+		// Of two that weigh the same, the one with a number says more.
+		return cmp.Or(boolCompare(y.Blocks, x.Blocks), cmp.Compare(Weight(y.Severity, y.Lamps), Weight(x.Severity, x.Lamps)), cmp.Compare(y.Excess, x.Excess))
 	})
 	a.Missing = missing(before, after)
 	if len(a.Missing) > 0 || after.Coverage.Places == 0 {

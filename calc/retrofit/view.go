@@ -247,6 +247,31 @@ type fixtureView struct {
 	lamps   []lampLoad
 }
 
+// traits are what a luminaire has that few have.
+func (v *fixtureView) traits() (t trait) {
+	for i := range v.lamps {
+		if m := v.lamps[i].model; m != nil && (m.Technology == loading.LEDTube || m.Technology == loading.Fluorescent) {
+			t |= tubes
+		}
+	}
+	if v.f.Conversion != "" && v.f.Conversion != "none" {
+		t |= rewired
+	}
+	if is(v.m.Discharge) || v.driver != nil && v.driver.kind == hidGear {
+		t |= forDischarge
+	}
+	if v.emergency() {
+		t |= forEmergency
+	}
+	if v.bare {
+		t |= straight
+	}
+	if v.proposed || v.f.Zone != "" && v.f.Zone != "dry" {
+		t |= wet
+	}
+	return t
+}
+
 // A dimmerView is a dimmer or switch with what hangs on it.
 type dimmerView struct {
 	view
