@@ -1,213 +1,212 @@
 package retrofit
 
-import "lampward/calc/loading"
-
-// A Quantity is what a load is measured in.
-type Quantity string
-
-// Quantities.
-const (
-	Watts    Quantity = "W"
-	VoltAmps Quantity = "VA"
-	Amps     Quantity = "A"
+import (
+	"lampward/calc/loading"
 )
 
-// A Load is what hangs on a driver, a dimmer or a circuit against its window, for showing beside each other. What is
-// not known is nil; nothing is assumed in its place.
+// A Load is one line of the picture "load against window" at a driver, a dimmer or a circuit. Nil is not known.
 type Load struct {
-	Subject    Subject  `json:"subject"`
-	Quantity   Quantity `json:"quantity"`
-	Present    *float64 `json:"present,omitempty"`     // lamps believed working
-	Design     *float64 `json:"design,omitempty"`      // all lamps
-	AfterLoss  *float64 `json:"after_loss,omitempty"`  // the largest working lamp out
-	Min        *float64 `json:"min,omitempty"`         // least load stated; 0: none stated on the gear
-	Max        *float64 `json:"max,omitempty"`         // rating
-	DeratedMax *float64 `json:"derated_max,omitempty"` // at the air temperature recorded, where a curve is on file
-	Pct        *float64 `json:"pct,omitempty"`         // present load, % of the maximum in force
+	Subject        Subject  `json:"subject"`
+	Quantity       string   `json:"quantity"`                    // W, VA, A, lamps; V: running voltage of a string against the driver's window
+	Output         int      `json:"output,omitempty"`            // of a driver with several outputs
+	Present        *float64 `json:"present,omitempty"`           // all lamps
+	PresentHigh    *float64 `json:"present_high,omitempty"`      // the upper end where Present is only the lower one of a range
+	Working        *float64 `json:"working,omitempty"`           // lamps believed working
+	AfterLossOfOne *float64 `json:"after_loss_of_one,omitempty"` // once the largest working lamp has failed
+	Min            *float64 `json:"min,omitempty"`
+	Max            *float64 `json:"max,omitempty"`
+	DeratedMax     *float64 `json:"derated_max,omitempty"` // at the air temperature on record
+	Pct            *float64 `json:"pct,omitempty"`         // Present over Max (over DeratedMax where that is known), %
 }
 
-// total sums lamps; unknown turns a sum into nil.
-type total struct {
-	w, va, working, largest float64
-	noW, noVA               bool
-	led, lamps              int
-}
-
-func (t *total) add(g *loading.LampGroup) {
-	t.lamps += g.Count
-	if g.Model == nil || g.Model.PowerW == nil {
-		t.noW, t.noVA = t.noW || g.Count > 0, t.noVA || g.Count > 0
-		return
-	}
-	p := *g.Model.PowerW
-	working := max(g.Count-g.Dark, 0)
-	t.w += float64(g.Count) * p
-	t.working += float64(working) * p
-	if working > 0 {
-		t.largest = max(t.largest, p)
-	}
-	switch classOf(g.Model) {
-	case filament:
-		t.va += float64(g.Count) * p
-	case led:
-		t.led += g.Count
-		fallthrough
-	default:
-		if g.Model.PowerFactor == nil || *g.Model.PowerFactor <= 0 {
-			t.noVA = true
-		} else {
-			t.va += float64(g.Count) * p / *g.Model.PowerFactor
-		}
-	}
-}
-
-func (t *total) lampsOf(f *loading.Fixture) {
-	t.noW = t.noW || f.LampsUnknown
-	t.noVA = t.noVA || f.LampsUnknown
-	for i := range f.Lamps {
-		t.add(&f.Lamps[i])
-	}
-}
-
-func unlessUnknown(v float64, unknown bool) *float64 {
-	if unknown {
-		return nil
-	}
-	return &v
-}
-
-// Loads returns the load of every driver in W and, where it is rated so, in VA; of every dimmer and switch in W of
-// lamps; and of every circuit in A. The order is that of the system.
+// Loads returns what every driver, dimmer and circuit carries and may carry, in that order. A driver with nothing on
+// record about it has no line.
 func Loads(sys *loading.System) []Load {
-	drivers := make([]total, len(sys.Drivers))
-	dimmers := make([]total, len(sys.Dimmers))
-	circuits := make([]current, len(sys.Circuits))
-	on := func(list []loading.Controlled, f *loading.Fixture, seen map[int]bool) {
-		for _, c := range list {
-			if c.Path == loading.PowerPath && c.Dimmer >= 0 && c.Dimmer < len(dimmers) && !seen[c.Dimmer] {
-				seen[c.Dimmer] = true
-				dimmers[c.Dimmer].lampsOf(f)
-			}
-		}
-	}
-	for i := range sys.Fixtures {
-		f := &sys.Fixtures[i]
-		seen := map[int]bool{}
-		on(f.Controls, f, seen)
-		if f.Driver >= 0 && f.Driver < len(drivers) {
-			drivers[f.Driver].lampsOf(f)
-			on(sys.Drivers[f.Driver].Controls, f, seen)
-		} else if f.Circuit >= 0 && f.Circuit < len(circuits) {
-			var t total
-			t.lampsOf(f)
-			circuits[f.Circuit].add(t.va, t.noVA || !f.GearNone)
-		}
-	}
+	var c Checker
+	c.sys, c.rule = sys, &rules[0] // what is asked on the way is not answered here
+	c.gather()
 	var out []Load
-	for i := range sys.Drivers {
-		d := &sys.Drivers[i]
-		t := &drivers[i]
-		subject := Subject{OnDriver, i, d.Key}
-		w := Load{Subject: subject, Quantity: Watts, Present: unlessUnknown(t.working, t.noW), Design: unlessUnknown(t.w, t.noW),
-			AfterLoss: unlessUnknown(t.working-t.largest, t.noW || t.lamps < 2)}
-		if d.Model != nil {
-			w.Min, w.Max = d.Model.MinLoadW, d.Model.MaxLoadW
-			if t.led == t.lamps && t.led > 0 && d.Model.LEDMaxLoadW != nil {
-				w.Max = d.Model.LEDMaxLoadW
-			}
-			if w.Max != nil && d.AirC != nil && len(d.Model.Derating) > 0 {
-				if share, err := loading.AllowedShare(d.Model.Derating, *d.AirC); err == nil {
-					w.DeratedMax = unlessUnknown(*w.Max*share, false)
-				}
-			}
-		}
-		w.percent()
-		out = append(out, w)
-		if d.Model != nil && d.Model.MaxLoadVA != nil {
-			va := Load{Subject: subject, Quantity: VoltAmps, Present: unlessUnknown(t.va, t.noVA), Design: unlessUnknown(t.va, t.noVA), Max: d.Model.MaxLoadVA}
-			va.percent()
-			out = append(out, va)
-		}
-		if d.Circuit >= 0 && d.Circuit < len(circuits) {
-			input, unknown := inputVA(d.Model, t)
-			circuits[d.Circuit].add(input, unknown)
-		}
+	for i := range c.driver {
+		out = c.driver[i].loads(out)
 	}
-	for i := range sys.Dimmers {
-		d := &sys.Dimmers[i]
-		t := &dimmers[i]
-		l := Load{Subject: Subject{OnDimmer, i, d.Key}, Quantity: Watts, Present: unlessUnknown(t.working, t.noW), Design: unlessUnknown(t.w, t.noW),
-			AfterLoss: unlessUnknown(t.working-t.largest, t.noW || t.lamps < 2)}
-		if d.Model != nil {
-			l.Min, l.Max = d.Model.MinLoadW, d.Model.MaxLoadW
-			if t.led == t.lamps && t.led > 0 {
-				l.Max = d.Model.LEDMaxLoadW
-				if d.Model.LEDMinLoadW != nil {
-					l.Min = d.Model.LEDMinLoadW
-				}
-			}
-		}
-		l.percent()
-		out = append(out, l)
+	for i := range c.dimmer {
+		out = c.dimmer[i].loads(out)
 	}
-	for i := range sys.Circuits {
-		c := &sys.Circuits[i]
-		volts := c.NominalV
-		if volts == nil {
-			volts = sys.MainsV
-		}
-		l := Load{Subject: Subject{OnCircuit, i, c.Key}, Quantity: Amps, Max: c.RatingA}
-		if volts != nil && *volts > 0 {
-			phases := 1.0
-			if c.Phases != nil && *c.Phases > 1 {
-				phases = float64(*c.Phases)
-			}
-			l.Present = unlessUnknown(circuits[i].va / *volts / phases, circuits[i].unknown)
-			l.Design = l.Present
-		}
-		if l.Max != nil && sys.WiringRules == loading.NFPA70 && (c.Listed100 == nil || !*c.Listed100) {
-			l.DeratedMax = unlessUnknown(*l.Max*0.8, false)
-		}
-		l.percent()
-		out = append(out, l)
+	for i := range c.circuit {
+		out = c.circuit[i].loads(out)
 	}
 	return out
 }
 
-// current sums what a circuit carries, in VA.
-type current struct {
-	va      float64
-	unknown bool
-}
-
-func (c *current) add(va float64, unknown bool) {
-	c.va += va
-	c.unknown = c.unknown || unknown
-}
-
-// inputVA is what gear with a load draws: its output over its efficiency and power factor.
-func inputVA(g *loading.Gear, t *total) (va float64, unknown bool) {
-	if g == nil || t.noW || g.Efficiency == nil || *g.Efficiency <= 0 {
-		return 0, true
-	}
-	pf := g.PowerFactor
-	if pf == nil && kindOf(g) == electronicTransformer && t.led == 0 {
-		// A filament load seen through gear that keeps no charge draws as a resistor does.
-		one := 1.0
-		pf = &one
-	}
-	if pf == nil || *pf <= 0 {
-		return 0, true
-	}
-	return t.w / *g.Efficiency / *pf, false
-}
-
-func (l *Load) percent() {
-	limit := l.Max
+// with fills the numbers of a load.
+func (l Load) with(present, working span, limits window) Load {
+	l.Present, l.PresentHigh = ends(present)
+	l.Working, _ = ends(working)
+	l.Min, l.Max, l.DeratedMax = limits.min, limits.max, limits.derated
+	most := l.Max
 	if l.DeratedMax != nil {
-		limit = l.DeratedMax
+		most = l.DeratedMax
 	}
-	if l.Present != nil && limit != nil && *limit > 0 {
-		l.Pct = unlessUnknown(100 * *l.Present / *limit, false)
+	if l.Present != nil && most != nil && *most > 0 {
+		pct := 100 * ratio(*l.Present, *most)
+		l.Pct = &pct
 	}
+	return l
+}
+
+type window struct{ min, max, derated *float64 }
+
+// ends returns a span as one number, or two where it is a range. A sum with an unknown part is not a number at all.
+func ends(s span) (lo, hi *float64) {
+	if s.hi > largest*1e6 {
+		return nil, nil
+	}
+	if s.exact() {
+		return &s.lo, nil
+	}
+	return &s.lo, &s.hi
+}
+
+// number returns a recorded number, nil where it is unknown or none is stated.
+func number(p *float64) *float64 {
+	if x, ok := positive(p); ok {
+		return &x
+	}
+	return nil
+}
+
+func (v *driverView) loads(out []Load) []Load {
+	at := Load{Subject: Subject{OnDriver, int(v.link.driver), v.d.Key}}
+	if v.load.count == 0 && !v.load.unseen && v.kind == gearUnknown {
+		return out
+	}
+	limits := window{min: number(v.g.MinLoadW), max: number(v.g.MaxLoadW)}
+	if share, ok := v.derated(); ok && limits.max != nil {
+		most := share * *limits.max
+		limits.derated = &most
+	}
+	if v.kind == constantCurrent {
+		mA, ok := v.current()
+		if !ok {
+			mA = nothingKnown
+		}
+		w, _, _, any := v.running(mA)
+		if !any {
+			return append(out, at.with(nothingKnown, nothingKnown, limits))
+		}
+		line := at
+		line.Quantity = "W"
+		out = append(out, line.with(w, nothingKnown, limits))
+		v.eachString(func(s *stringView) {
+			line := at
+			line.Quantity, line.Output = "V", s.output
+			out = append(out, line.with(s.run, nothingKnown, window{min: number(v.g.ComplianceMinV), max: number(v.g.ComplianceMaxV)}))
+		})
+		return out
+	}
+	line := at
+	line.Quantity = "W"
+	line = line.with(v.load.w, v.load.workingW, limits)
+	if v.load.workingW.exact() && v.load.working > 0 {
+		left := max(0, v.load.workingW.lo-v.load.largestW)
+		line.AfterLossOfOne = &left
+	}
+	out = append(out, line)
+	if va := number(v.g.MaxLoadVA); va != nil {
+		line = at
+		line.Quantity = "VA"
+		out = append(out, line.with(v.load.va, v.load.workingVA, window{max: va}))
+	}
+	return out
+}
+
+// derated is the share of its rating gear may carry at the air on record.
+func (v *driverView) derated() (share float64, ok bool) {
+	air, ok := degrees(v.d.AirC)
+	if !ok || len(v.g.Derating) == 0 {
+		return 0, false
+	}
+	share, err := loading.AllowedShare(v.g.Derating, air)
+	return share, err == nil
+}
+
+func (v *dimmerView) loads(out []Load) []Load {
+	s := v.powerLoad()
+	if s.members == 0 {
+		return out
+	}
+	at := Load{Subject: v.subject}
+	if s.unknown {
+		s.working.hi = nothingKnown.hi
+	}
+	all, any := span{}, false
+	limit := window{}
+	kinds := 0
+	for c := range loadClasses {
+		if !s.present[c] || c == inductive {
+			continue
+		}
+		kinds++
+		all, any = all.plus(s.class[c]), true
+		if most, ok, _ := v.rating(c); ok {
+			limit.max = &most
+		} else {
+			limit.max = nil
+		}
+	}
+	if kinds > 1 {
+		limit.max = nil // each kind has a rating of its own; shares of them are what counts
+	}
+	if s.unknown {
+		all.hi = nothingKnown.hi
+	}
+	if least, ok, _ := v.minimum(&s); ok && least > 0 {
+		limit.min = &least
+	}
+	if any || s.present[inductive] {
+		line := at
+		line.Quantity = "W"
+		if !any || s.present[inductive] {
+			all = nothingKnown // wound transformers are rated in VA
+		}
+		out = append(out, line.with(all, s.working, limit))
+	}
+	if s.present[inductive] {
+		line := at
+		line.Quantity = "VA"
+		w := window{}
+		if most, ok, _ := v.rating(inductive); ok {
+			w.max = &most
+		}
+		out = append(out, line.with(s.class[inductive], nothingKnown, w))
+	}
+	if n := v.m.LEDMaxCount; n != nil && *n > 0 && *n < 1e6 {
+		line := at
+		line.Quantity = "lamps"
+		most := float64(*n)
+		out = append(out, line.with(exactly(float64(s.leds)), nothingKnown, window{max: &most}))
+	}
+	return out
+}
+
+func (v *circuitView) loads(out []Load) []Load {
+	if len(v.drivers)+len(v.fixtures) == 0 {
+		return out
+	}
+	line := Load{Subject: v.subject, Quantity: "A"}
+	va, _ := v.steadyVA()
+	volts, ok := v.feedV(v.c)
+	if !ok {
+		return append(out, line.with(nothingKnown, nothingKnown, window{max: number(v.c.RatingA)}))
+	}
+	phases := 1.0
+	if v.c.Phases != nil && *v.c.Phases == 3 {
+		phases = 3
+	}
+	limit := window{max: number(v.c.RatingA)}
+	if share := v.continuousShare(); share.exact() && share.lo < 1 && limit.max != nil {
+		most := share.lo * *limit.max
+		limit.derated = &most
+	}
+	return append(out, line.with(va.scaled(1/(volts*phases)), nothingKnown, limit))
 }
