@@ -4,6 +4,7 @@ import (
 	"slices"
 	"time"
 
+	"lampward/calc/loading"
 	"lampward/calc/retrofit"
 	"lampward/domain"
 	"lampward/domain/plant"
@@ -54,6 +55,15 @@ func Compute(cat *plant.Catalogue, recs *plant.Records, at time.Time) (Report, e
 		with  domain.ID
 	}
 	byAbout := map[about]int{}
+	boards := map[domain.ID]*plant.Circuit{} // circuit -> first of its board
+	first := map[string]*plant.Circuit{}
+	for i := range recs.Circuits {
+		k := &recs.Circuits[i]
+		if first[k.Board] == nil {
+			first[k.Board] = k
+		}
+		boards[k.ID] = first[k.Board]
+	}
 	for i := range trees {
 		t := &trees[i]
 		res := t.Check(&checker)
@@ -70,6 +80,10 @@ func Compute(cat *plant.Catalogue, recs *plant.Records, at time.Time) (Report, e
 			rep.Findings = append(rep.Findings, ComputedFinding{Finding: f, Label: labels[id], ID: id})
 		}
 		for _, q := range res.Questions {
+			if first, ok := boards[domain.ID(q.About.Key)]; ok && (q.Field == retrofit.FieldCircuitRCD || q.Field == retrofit.FieldCircuitRCDMA) {
+				// Asked once a board: whoever opens it sees all its ways.
+				q.About.Kind, q.About.Key, q.About.Name = "board", loading.Key(first.ID), first.Board
+			}
 			k := about{q.Field, q.About.Kind, domain.ID(q.About.Key), domain.ID(q.About.With)}
 			if j, ok := byAbout[k]; ok {
 				have := &rep.Questions[j]

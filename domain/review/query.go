@@ -267,9 +267,9 @@ func Groups(ctx context.Context, s domain.Scope, cat *plant.Catalogue) ([]Group,
 // A Question asks for one fact about one model, or one place, and says how many places it settles.
 type Question struct {
 	Field     string     `json:"field"`
-	Ask       string     `json:"ask"` // what to look for on site
-	AboutKind string     `json:"about_kind"`
-	AboutID   domain.ID  `json:"about_id"`
+	Ask       string     `json:"ask"`        // what to look for on site
+	AboutKind string     `json:"about_kind"` // a kind of model or place, or board
+	AboutID   domain.ID  `json:"about_id"`   // of a board: its first circuit
 	WithID    *domain.ID `json:"with_id,omitempty"`
 	About     string     `json:"about"` // name of the model, or label of the place
 	Rule      string     `json:"rule"`
@@ -283,16 +283,20 @@ const MostQuestions = 20
 
 // Questions returns the most useful questions of s's building and how many there are in all.
 func Questions(ctx context.Context, s domain.Scope, cat *plant.Catalogue) (list []Question, total int, err error) {
+	// What is behind a residual-current device is asked once a board: whoever opens it sees all its ways.
 	rows, err := s.Query(ctx, `
-		SELECT q.field, q.about_kind, q.about_id, q.with_id, (array_agg(q.rule ORDER BY `+questionRank+` DESC))[1],
+		SELECT q.field, CASE WHEN c.id IS NULL THEN q.about_kind ELSE 'board' END, (array_agg(q.about_id ORDER BY q.about_id))[1], q.with_id,
+		       (array_agg(q.rule ORDER BY `+questionRank+` DESC))[1],
 		       max(`+questionRank+`), bool_or(q.blocks), sum(q.places),
-		       (SELECT coalesce((SELECT tag FROM place WHERE building_id = $1 AND id = q.about_id),
-		                        (SELECT board || '/' || way FROM circuit WHERE building_id = $1 AND id = q.about_id), '')),
+		       coalesce(c.board, (SELECT tag FROM place WHERE building_id = $1 AND id = (array_agg(q.about_id))[1]),
+		                (SELECT board || '/' || way FROM circuit WHERE building_id = $1 AND id = (array_agg(q.about_id))[1]), ''),
 		       count(*) OVER ()
 		  FROM question q
+		  LEFT JOIN circuit c ON c.building_id = q.building_id AND c.id = q.about_id AND q.field IN ('circuit.rcd', 'circuit.rcd_ma')
 		 WHERE q.building_id = $1
-		 GROUP BY q.field, q.about_kind, q.about_id, q.with_id
-		 ORDER BY max(`+questionRank+`) * sum(q.places) DESC, q.about_kind LIKE '%_model' DESC, q.field, q.about_id
+		 GROUP BY q.field, q.about_kind, c.id IS NULL, c.board, CASE WHEN c.id IS NULL THEN q.about_id END, q.with_id,
+		          CASE WHEN c.id IS NULL THEN q.about_kind ELSE 'board' END
+		 ORDER BY max(`+questionRank+`) * sum(q.places) DESC, q.about_kind LIKE '%_model' DESC, q.field, 3
 		 LIMIT $2`, s.Building, MostQuestions)
 	if err != nil {
 		return nil, 0, domain.Classify(err, "question")

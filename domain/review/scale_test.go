@@ -105,7 +105,7 @@ func BenchmarkFullReview(b *testing.B) {
 				}
 				reviewed += time.Since(start)
 			}
-b.ReportMetric(reviewed.Seconds()/copied.Seconds(), "x/copy")
+			b.ReportMetric(reviewed.Seconds()/copied.Seconds(), "x/copy")
 			b.ReportMetric(reviewed.Seconds()/float64(b.N), "s/review")
 			b.ReportMetric(copied.Seconds()/float64(b.N), "s/copy")
 		})
