@@ -41,5 +41,9 @@ func (s *Server) table() []route {
 		{Method: http.MethodGet, Path: "/docs/{asset}", Op: "docsAsset", Scope: public, Handle: s.docsAsset, Gives: assetMedia},
 		{Method: http.MethodGet, Path: "/problems/{kind}", Op: "problem", Scope: public, Handle: s.problemPage, Gives: text},
 	}
+	// the estate and the catalogue
+	// the register of a building
+	// checks and answers
+	// files in and out
 	return append(t, s.more...)
 }
