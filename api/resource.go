@@ -19,6 +19,7 @@ type resource[T any] struct {
 	Path  string // of the list: /v1/buildings/{building_id}/drivers
 	Scope scope  // of every operation
 	Item  scope  // of those on one record, where it differs; Scope where 0
+	Begin scope  // of create, where it differs; Scope where 0
 	Read  right
 	Make  right // create
 	Edit  right // replace, change, retire, restore
@@ -77,6 +78,9 @@ func (r *resource[T]) routes() []route {
 	if r.Item == 0 {
 		r.Item = r.Scope
 	}
+	if r.Begin == 0 {
+		r.Begin = r.Scope
+	}
 	one, many := camel(r.One), camel(r.Many)
 	item := r.Path + "/{" + r.One + "_id}"
 	var out []route
@@ -87,7 +91,7 @@ func (r *resource[T]) routes() []route {
 	}
 	add(r.List != nil, route{Method: http.MethodGet, Path: r.Path, Op: "list" + many, Right: r.Read, Scope: r.Scope,
 		Handle: r.list, Gives: listMedia, Timeout: -1})
-	add(r.Create != nil, route{Method: http.MethodPost, Path: r.Path, Op: "create" + one, Right: r.Make, Scope: r.Scope,
+	add(r.Create != nil, route{Method: http.MethodPost, Path: r.Path, Op: "create" + one, Right: r.Make, Scope: r.Begin,
 		Handle: r.create, Takes: []string{jsonMedia}})
 	add(r.Get != nil, route{Method: http.MethodGet, Path: item, Op: "get" + one, Right: r.Read, Scope: r.Item, Handle: r.get})
 	add(r.Update != nil, route{Method: http.MethodPut, Path: item, Op: "replace" + one, Right: r.Edit, Scope: r.Item,
@@ -216,12 +220,15 @@ func (r *resource[T]) comparable(row, asked *T) ([]byte, error) {
 		return nil, err
 	}
 	for _, name := range r.Generated {
-		if v, ok := given[name]; !ok || string(v) == `""` || string(v) == "null" {
+		if v, ok := given[name]; !ok || leftOut[string(v)] {
 			delete(m, name)
 		}
 	}
 	return json.Marshal(m)
 }
+
+// leftOut are the JSON values of a generated field that a client did not send.
+var leftOut = map[string]bool{`""`: true, "null": true, "0": true, "false": true, `"00000000-0000-0000-0000-000000000000"`: true}
 
 func members(v any) (map[string]json.RawMessage, error) {
 	raw, err := json.Marshal(v)

@@ -41,9 +41,11 @@ func (s *Server) table() []route {
 		{Method: http.MethodGet, Path: "/docs/{asset}", Op: "docsAsset", Scope: public, Handle: s.docsAsset, Gives: assetMedia},
 		{Method: http.MethodGet, Path: "/problems/{kind}", Op: "problem", Scope: public, Handle: s.problemPage, Gives: text},
 	}
-	// the estate and the catalogue
-	// the register of a building
-	// checks and answers
+	t = append(t, s.estate()...)
+	t = append(t, s.catalogued()...)
+	t = append(t, s.holders()...)
+	t = append(t, s.register()...)
+	t = append(t, s.checks()...)
 	// files in and out
 	return append(t, s.more...)
 }

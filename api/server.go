@@ -13,6 +13,7 @@ import (
 	"github.com/prometheus/client_golang/prometheus"
 
 	"lampward/domain"
+	"lampward/domain/review"
 )
 
 // Limits bound what one request, and one principal, may ask for. Zero fields take the default.
@@ -38,6 +39,7 @@ type Options struct {
 	Registerer     prometheus.Registerer
 	Gatherer       prometheus.Gatherer
 	Authenticator  Authenticator
+	Reviewer       *review.Reviewer                               // review.New() where nil
 	BuildingExists func(context.Context, domain.ID) (bool, error) // asked for grants on all buildings; not asked where nil
 	Ready          []Check
 	Limits         Limits
@@ -119,6 +121,9 @@ func (s *Server) prepare(r *route) *route {
 func (o Options) withDefaults() Options {
 	if o.Clock == nil {
 		o.Clock = time.Now
+	}
+	if o.Reviewer == nil {
+		o.Reviewer = review.New()
 	}
 	if o.Log == nil {
 		o.Log = slog.Default()

@@ -1,12 +1,40 @@
 package domain
 
-import "github.com/jackc/pgx/v5/pgtype"
+import (
+	"encoding/json"
+	"strings"
+
+	"github.com/jackc/pgx/v5/pgtype"
+)
 
 // Decimal is an exact decimal number as written, at most ten digits and four places.
 type Decimal string
 
 // Valid reports whether d is such a number.
 func (d Decimal) Valid() bool { return amountForm.MatchString(string(d)) }
+
+// plain returns d with as many places as it needs, two at least: 4.5 and 4.5000 are both 4.50. What is no decimal stays.
+func (d Decimal) plain() Decimal {
+	if !d.Valid() {
+		return d
+	}
+	whole, places, _ := strings.Cut(string(d), ".")
+	places = strings.TrimRight(places, "0")
+	for len(places) < 2 {
+		places += "0"
+	}
+	return Decimal(whole + "." + places)
+}
+
+// UnmarshalJSON reads a decimal from a JSON string.
+func (d *Decimal) UnmarshalJSON(data []byte) error {
+	var s string
+	if err := json.Unmarshal(data, &s); err != nil {
+		return err
+	}
+	*d = Decimal(s).plain()
+	return nil
+}
 
 // NumericValue lets pgx write a Decimal.
 func (d Decimal) NumericValue() (pgtype.Numeric, error) {
@@ -27,6 +55,6 @@ func (d *Decimal) ScanNumeric(n pgtype.Numeric) error {
 	if err != nil {
 		return err
 	}
-	*d = Decimal(v.(string))
+	*d = Decimal(v.(string)).plain()
 	return nil
 }

@@ -8,7 +8,7 @@ import (
 )
 
 // A Match narrows a list to rows whose column equals Value, or is absent where Value is nil. Op "contains" matches
-// text that holds Value in any case; "from" and "until" compare.
+// text that holds Value in any case; "from" and "until" compare; "in" takes a list of identifiers.
 type Match struct {
 	Column string
 	Op     string // empty: equals
@@ -33,6 +33,10 @@ func (t *Table[T]) Where(from int, matches []Match) (string, []any, error) {
 			text := strings.NewReplacer(`\`, `\\`, `%`, `\%`, `_`, `\_`).Replace(fmt.Sprint(m.Value))
 			parts, args = append(parts, fmt.Sprintf("%s ILIKE '%%' || $%d || '%%'", m.Column, n)), append(args, text)
 			continue
+		case m.Op == "absent": // Value is whether the column is absent
+			parts = append(parts, fmt.Sprintf("(%s IS NULL) = $%d", m.Column, n))
+		case m.Op == "in":
+			parts = append(parts, fmt.Sprintf("%s = ANY($%d)", m.Column, n))
 		case m.Op == "from":
 			parts = append(parts, fmt.Sprintf("%s >= $%d", m.Column, n))
 		case m.Op == "until":

@@ -67,6 +67,14 @@ func NewTable[T any](name, what string) *Table[T] {
 	return t
 }
 
+// NewEstateTable describes a table of the estate: its rows may point to a building by value but are not a building's.
+func NewEstateTable[T any](name, what string) *Table[T] {
+	t := NewTable[T](name, what)
+	t.scoped = false
+	t.prepareUpdate()
+	return t
+}
+
 func (t *Table[T]) add(typ reflect.Type, path []int) {
 	for i := range typ.NumField() {
 		f := typ.Field(i)
@@ -206,17 +214,18 @@ func (t *Table[T]) Copy(ctx context.Context, s Scope, n int, row func(i int) *T)
 // prepareUpdate writes the statement that Update runs, and which columns its arguments are. An update never sets what
 // says which row it is, nor when it was made.
 func (t *Table[T]) prepareUpdate() {
+	t.updateArgs = nil
 	var set []string
 	where := "true"
 	for i, c := range t.columns {
 		n := len(t.updateArgs) + 1
-		switch c.name {
-		case "created_at":
+		switch {
+		case c.name == "created_at":
 			continue
-		case "version":
+		case c.name == "version":
 			set = append(set, "version = version + 1")
 			where += fmt.Sprintf(" AND version = $%d", n)
-		case "id", "building_id":
+		case c.name == "id", c.name == "building_id" && t.scoped:
 			where += fmt.Sprintf(" AND %s = $%d", c.name, n)
 		default:
 			set = append(set, fmt.Sprintf("%s = $%d", c.name, n))

@@ -42,9 +42,10 @@ CREATE TABLE space_use (
     yearly_hours           double precision,
     required_lx            double precision,
     source                 text NOT NULL DEFAULT '',
-    CONSTRAINT space_use_pkey PRIMARY KEY (id),
-    CONSTRAINT space_use_use_key UNIQUE (use)
+    CONSTRAINT space_use_pkey PRIMARY KEY (id)
 );
+
+CREATE UNIQUE INDEX space_use_use_key ON space_use (use) WHERE retired_at IS NULL;
 
 CREATE TABLE lamp_model (
     id                     uuid NOT NULL,
@@ -94,10 +95,11 @@ CREATE TABLE lamp_model (
     warranty_h             double precision,
     fact_source            text NOT NULL DEFAULT '',
     CONSTRAINT lamp_model_pkey PRIMARY KEY (id),
-    CONSTRAINT lamp_model_code_key UNIQUE (code),
     CONSTRAINT lamp_model_merged_into_fkey FOREIGN KEY (merged_into) REFERENCES lamp_model (id),
     CONSTRAINT lamp_model_not_itself_check CHECK (merged_into <> id)
 );
+
+CREATE UNIQUE INDEX lamp_model_code_key ON lamp_model (code) WHERE retired_at IS NULL;
 
 CREATE TABLE driver_model (
     id                     uuid NOT NULL,
@@ -162,10 +164,11 @@ CREATE TABLE driver_model (
     warranty_h             double precision,
     fact_source            text NOT NULL DEFAULT '',
     CONSTRAINT driver_model_pkey PRIMARY KEY (id),
-    CONSTRAINT driver_model_code_key UNIQUE (code),
     CONSTRAINT driver_model_merged_into_fkey FOREIGN KEY (merged_into) REFERENCES driver_model (id),
     CONSTRAINT driver_model_not_itself_check CHECK (merged_into <> id)
 );
+
+CREATE UNIQUE INDEX driver_model_code_key ON driver_model (code) WHERE retired_at IS NULL;
 
 CREATE TABLE dimmer_model (
     id                     uuid NOT NULL,
@@ -202,10 +205,11 @@ CREATE TABLE dimmer_model (
     warranty_months        double precision,
     fact_source            text NOT NULL DEFAULT '',
     CONSTRAINT dimmer_model_pkey PRIMARY KEY (id),
-    CONSTRAINT dimmer_model_code_key UNIQUE (code),
     CONSTRAINT dimmer_model_merged_into_fkey FOREIGN KEY (merged_into) REFERENCES dimmer_model (id),
     CONSTRAINT dimmer_model_not_itself_check CHECK (merged_into <> id)
 );
+
+CREATE UNIQUE INDEX dimmer_model_code_key ON dimmer_model (code) WHERE retired_at IS NULL;
 
 CREATE TABLE fixture_model (
     id                     uuid NOT NULL,
@@ -240,11 +244,12 @@ CREATE TABLE fixture_model (
     warranty_months        double precision,
     fact_source            text NOT NULL DEFAULT '',
     CONSTRAINT fixture_model_pkey PRIMARY KEY (id),
-    CONSTRAINT fixture_model_code_key UNIQUE (code),
     CONSTRAINT fixture_model_merged_into_fkey FOREIGN KEY (merged_into) REFERENCES fixture_model (id),
     CONSTRAINT fixture_model_not_itself_check CHECK (merged_into <> id),
     CONSTRAINT fixture_model_driver_model_fkey FOREIGN KEY (driver_model_id) REFERENCES driver_model (id)
 );
+
+CREATE UNIQUE INDEX fixture_model_code_key ON fixture_model (code) WHERE retired_at IS NULL;
 
 CREATE TABLE pairing (
     id                     uuid NOT NULL,
@@ -282,8 +287,9 @@ CREATE TABLE price (
     currency               char(3) NOT NULL,
     source                 text NOT NULL DEFAULT '',
     CONSTRAINT price_pkey PRIMARY KEY (id),
-    CONSTRAINT price_model_from_key UNIQUE (model_id, currency, from_date),
     CONSTRAINT price_model_kind_check CHECK (model_kind IN ('lamp', 'driver', 'dimmer', 'fixture'))
 );
+
+CREATE UNIQUE INDEX price_model_from_key ON price (model_id, currency, from_date) WHERE retired_at IS NULL;
 
 COMMIT;

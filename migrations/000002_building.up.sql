@@ -26,9 +26,10 @@ CREATE TABLE building_rate (
     currency               text NOT NULL DEFAULT '',
     source                 text NOT NULL DEFAULT '',
     CONSTRAINT building_rate_pkey PRIMARY KEY (building_id, id),
-    CONSTRAINT building_rate_from_key UNIQUE (building_id, rate, currency, from_date),
     CONSTRAINT building_rate_building_fkey FOREIGN KEY (building_id) REFERENCES building (id)
 );
+
+CREATE UNIQUE INDEX building_rate_from_key ON building_rate (building_id, rate, currency, from_date) WHERE retired_at IS NULL;
 
 CREATE TABLE building_total (
     building_id            uuid NOT NULL,

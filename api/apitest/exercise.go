@@ -2,6 +2,8 @@ package apitest
 
 import (
 	"encoding/json"
+	"fmt"
+	"hash/fnv"
 	"net/http"
 	"reflect"
 	"strings"
@@ -17,6 +19,10 @@ type Kind struct {
 	Retire bool           // it can be retired and restored
 	// Unique is a field that no two records may share, empty where there is none.
 	Unique string
+	// Values are two values of Unique besides Body's; words where nil.
+	Values []any
+	// Kept says that the field stays taken after a record is retired.
+	Kept bool
 }
 
 // Exercise creates, reads, lists, replaces, changes, retires and restores a record, and holds what is common to all
@@ -24,6 +30,9 @@ type Kind struct {
 func Exercise(t *testing.T, c *Client, k Kind) string {
 	t.Helper()
 	c = c.For(t)
+	if k.Values == nil {
+		k.Values = []any{"own-1", "keyed-1"}
+	}
 	made := c.Post(k.List, k.Body).Want(http.StatusCreated)
 	row := made.Object()
 	at := made.Header.Get("Location")
@@ -63,9 +72,11 @@ func Exercise(t *testing.T, c *Client, k Kind) string {
 
 	// The client's own identifier: the same body answers the same, another body does not.
 	own := clone(k.Body)
-	own["id"] = "01999999-9999-7999-8999-00000000000a"
+	sum := fnv.New64a()
+	sum.Write([]byte(k.List))
+	own["id"] = fmt.Sprintf("01999999-9999-7999-8999-%012x", sum.Sum64()>>16)
 	if k.Unique != "" {
-		own[k.Unique] = "own-1"
+		own[k.Unique] = k.Values[0]
 	}
 	first := c.Post(k.List, own).Want(http.StatusCreated)
 	again := c.Post(k.List, own).Want(http.StatusCreated)
@@ -80,16 +91,16 @@ func Exercise(t *testing.T, c *Client, k Kind) string {
 	if k.Unique != "" {
 		c.Post(k.List, map[string]any{}, "Content-Type: text/plain").Want(http.StatusUnsupportedMediaType)
 		taken := clone(k.Body)
-		taken[k.Unique] = "own-1"
+		taken[k.Unique] = k.Values[0]
 		c.Post(k.List, taken).Want(http.StatusConflict)
-		c.Patch(at, map[string]any{k.Unique: "own-1"}, "If-Match: "+tag).Want(http.StatusConflict)
+		c.Patch(at, map[string]any{k.Unique: k.Values[0]}, "If-Match: "+tag).Want(http.StatusConflict)
 		c.Put(at, taken, "If-Match: "+tag).Want(http.StatusConflict)
 	}
 
 	// An idempotency key: the same again, never twice, not for another body.
 	keyed := clone(k.Body)
 	if k.Unique != "" {
-		keyed[k.Unique] = "keyed-1"
+		keyed[k.Unique] = k.Values[1]
 	}
 	once := c.Post(k.List, keyed, `Idempotency-Key: "exercise"`).Want(http.StatusCreated)
 	twice := c.Post(k.List, keyed, "Idempotency-Key: exercise").Want(http.StatusCreated)
@@ -146,7 +157,7 @@ func Exercise(t *testing.T, c *Client, k Kind) string {
 		c.Post(at+"/restore", nil, "If-Match: "+tag).Want(http.StatusPreconditionFailed)
 		c.Post(at+"/restore", map[string]any{"a": 1}).Want(http.StatusUnprocessableEntity)
 		c.Post(at+"/restore", nil, "If-Match: nonsense").Want(http.StatusBadRequest)
-		if k.Unique != "" { // meanwhile another takes its place
+		if k.Unique != "" && !k.Kept { // meanwhile another takes its place
 			usurper := clone(k.Body)
 			usurper[k.Unique] = retired.Object()[k.Unique]
 			there := c.Post(k.List, usurper).Want(http.StatusCreated).Header.Get("Location")

@@ -6,7 +6,7 @@ import (
 
 // A Load is one line of the picture "load against window" at a driver, a dimmer or a circuit. Nil is not known.
 type Load struct {
-	Subject        Subject  `json:"subject"`
+	Subject        Subject  `json:"-"`
 	Quantity       string   `json:"quantity"`                    // W, VA, A, lamps; V: running voltage of a string against the driver's window
 	Output         int      `json:"output,omitempty"`            // of a driver with several outputs
 	Present        *float64 `json:"present,omitempty"`           // all lamps

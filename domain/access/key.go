@@ -60,7 +60,7 @@ type Person struct {
 // Tables of access.
 var (
 	Keys    = domain.NewTable[Key]("api_key", "key")
-	Grants  = domain.NewTable[Grant]("access_grant", "grant")
+	Grants  = domain.NewEstateTable[Grant]("access_grant", "grant")
 	Persons = domain.NewTable[Person]("person", "person")
 )
 

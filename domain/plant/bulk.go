@@ -6,6 +6,7 @@ import (
 	"encoding/json"
 	"errors"
 	"fmt"
+	"slices"
 	"strings"
 
 	"lampward/domain"
@@ -32,6 +33,12 @@ type Bulk struct {
 // Rows returns how many records b holds.
 func (b *Bulk) Rows() int {
 	return len(b.Spaces) + len(b.MakeUps) + len(b.Circuits) + len(b.Dimmers) + len(b.Drivers) + len(b.Fixtures) + len(b.Feeds) + len(b.Controls)
+}
+
+// Clone returns a bulk whose rows may be changed without changing b's.
+func (b *Bulk) Clone() Bulk {
+	return Bulk{Spaces: slices.Clone(b.Spaces), MakeUps: slices.Clone(b.MakeUps), Circuits: slices.Clone(b.Circuits), Dimmers: slices.Clone(b.Dimmers),
+		Drivers: slices.Clone(b.Drivers), Fixtures: slices.Clone(b.Fixtures), Feeds: slices.Clone(b.Feeds), Controls: slices.Clone(b.Controls)}
 }
 
 // BulkCounts tells what became of the rows.

@@ -331,26 +331,32 @@ func (r *Reviewer) FitAtPlace(ctx context.Context, s domain.Scope, q *FitRequest
 
 // treeOf loads and builds the tree of one place or circuit.
 func treeOf(ctx context.Context, s domain.Scope, cat *plant.Catalogue, id domain.ID) (*Tree, error) {
+	t, _, err := treeWith(ctx, s, cat, id)
+	return t, err
+}
+
+// treeWith is treeOf with the records it was built from.
+func treeWith(ctx context.Context, s domain.Scope, cat *plant.Catalogue, id domain.ID) (*Tree, *plant.Records, error) {
 	ids, err := touched(ctx, s, Touch{Places: []domain.ID{id}, Circuits: []domain.ID{id}})
 	if err != nil {
-		return nil, err
+		return nil, nil, err
 	}
 	recs, err := plant.Load(ctx, s, ids)
 	if err != nil {
-		return nil, err
+		return nil, nil, err
 	}
 	trees, err := Trees(cat, recs, s.At)
 	if err != nil {
-		return nil, err
+		return nil, nil, err
 	}
 	for i := range trees {
 		for _, m := range trees[i].Members {
 			if m.ID == id {
-				return &trees[i], nil
+				return &trees[i], recs, nil
 			}
 		}
 	}
-	return nil, domain.NotFoundf("there is no such place in use")
+	return nil, nil, domain.NotFoundf("there is no such place in use")
 }
 
 // fixture returns the position of a luminaire in the tree's system, -1 if it is not one.

@@ -49,6 +49,13 @@ func GetBuilding(ctx context.Context, s domain.Scope, id domain.ID) (Building, e
 	return Buildings.Get(ctx, s, id)
 }
 
+// Exists reports whether there is a building with the given id, retired or not.
+func Exists(ctx context.Context, db domain.Queryer, id domain.ID) (bool, error) {
+	var there bool
+	err := db.QueryRow(ctx, `SELECT EXISTS (SELECT FROM building WHERE id = $1)`, id).Scan(&there)
+	return there, domain.Classify(err, "building")
+}
+
 // BuildingByCode returns the building with the given code, retired or not.
 func BuildingByCode(ctx context.Context, s domain.Scope, code string) (Building, error) {
 	return Buildings.One(ctx, s, "WHERE code = $1", code)

@@ -1,0 +1,245 @@
+package api
+
+import (
+	"context"
+	"strings"
+	"testing"
+
+	"lampward/api/apitest"
+	"lampward/calc/loading"
+	"lampward/domain"
+	"lampward/domain/domaintest"
+	"lampward/domain/site"
+)
+
+// yard is a bench with two invented buildings on record, an invented catalogue, and a key for each role on the first.
+type yard struct {
+	*bench
+	models domaintest.Models
+}
+
+const atA = "/v1/buildings/01000000-0000-7000-8000-00000000000a"
+
+func newYard(t testing.TB, set ...func(*Options)) *yard {
+	t.Helper()
+	b := dbBench(t, append([]func(*Options){func(o *Options) {
+		o.BuildingExists = func(ctx context.Context, id domain.ID) (bool, error) { return site.Exists(ctx, o.Pool, id) }
+	}}, set...)...)
+	ctx := context.Background()
+	for id, code := range map[domain.ID]string{buildingA: "YARD-A", buildingB: "YARD-B"} {
+		row := site.Building{Code: code, Name: "Invented building " + code, TimeZone: "Europe/Dublin",
+			Supply: loading.Supply{MainsV: domaintest.Of(230.0), MainsHz: domaintest.Of(50.0), WiringRules: loading.IEC60364}}
+		err := domain.In(ctx, b.pool, id, domaintest.Tester, now.AddDate(-1, 0, 0), func(s domain.Scope) error { return site.CreateBuilding(ctx, s, &row) })
+		if err != nil {
+			t.Fatal(err)
+		}
+	}
+	return &yard{b, domaintest.Catalogue(t, b.pool)}
+}
+
+// post records something in building A and returns its identifier.
+func (y *yard) post(t testing.TB, path string, body map[string]any) string {
+	t.Helper()
+	return y.Post(atA+path, body).Want(201).Object()["id"].(string)
+}
+
+func TestBuildings(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	admin := y.As("all")
+	body := map[string]any{"code": "B1", "name": "Invented hall", "time_zone": "Europe/Vienna", "mains_v": 230.0, "mains_hz": 50.0,
+		"wiring_rules": "iec_60364", "address": "1 Invented Street\nNowhere", "note": "made up"}
+	apitest.Exercise(t, admin, apitest.Kind{List: "/v1/buildings", Body: body, Change: map[string]any{"name": "Another hall", "mains_v": 240.0},
+		Wrong: map[string]any{"time_zone": "Nowhere/City"}, Retire: true, Unique: "code", Kept: true})
+
+	// Each sees the buildings they have a grant on.
+	if got := y.Get("/v1/buildings").Want(200).Object()["items"].([]any); len(got) != 1 || got[0].(map[string]any)["code"] != "YARD-A" {
+		t.Errorf("the planner of one building sees %v", got)
+	}
+	y.As("nobody").Get("/v1/buildings").Want(403)
+	bad := admin.Post("/v1/buildings", map[string]any{"code": "two words", "name": "", "time_zone": "Local", "mains_v": 1e6, "mains_hz": -50, "wiring_rules": "mine"}).Want(422)
+	if got := strings.Join(bad.Pointers(), " "); got != "/code /mains_hz /mains_v /name /time_zone /wiring_rules" {
+		t.Errorf("wrong fields told at %s", got)
+	}
+	// A building with places in it stays.
+	y.post(t, "/fixtures", map[string]any{"tag": "L1"})
+	y.Post(atA+"/retire", nil).Want(409)
+
+	all := admin.Get("/v1/summary").Want(200).Object()
+	if len(all["buildings"].([]any)) < 2 || all["pending"] != true {
+		t.Errorf("summary %v", all)
+	}
+	if own := y.Get("/v1/summary").Want(200).Object()["buildings"].([]any); len(own) != 1 {
+		t.Errorf("the planner's summary has %d buildings", len(own))
+	}
+	y.Get("/v1/summary?x=1").Want(422)
+	y.As("nobody").Get("/v1/summary").Want(403)
+}
+
+func TestRates(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	apitest.Exercise(t, y.Client, apitest.Kind{List: atA + "/rates",
+		Body:   map[string]any{"rate": "energy_per_kwh", "from_date": "2026-01-01", "amount": "0.31", "currency": "EUR", "source": "invented"},
+		Change: map[string]any{"amount": "0.29"}, Wrong: map[string]any{"amount": "-1"}, Retire: true, Unique: "from_date", Values: []any{"2026-02-01", "2026-03-01"}})
+}
+
+func TestSpaceUses(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	apitest.Exercise(t, y.As("all"), apitest.Kind{List: "/v1/space_uses",
+		Body:   map[string]any{"use": "reading room", "yearly_hours": 3600.0, "required_lx": 500.0, "source": "invented"},
+		Change: map[string]any{"yearly_hours": 3000.0}, Wrong: map[string]any{"yearly_hours": 9000}, Retire: true, Unique: "use"})
+}
+
+func TestModels(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	admin := y.As("all")
+	for one, kind := range map[string]apitest.Kind{
+		"lamp_model": {Body: map[string]any{"code": "X1", "name": "Invented lamp", "technology": "led_lamp", "cap": "GU5.3", "supply": "elv_ac_dc", "rated_v": 12.0,
+			"power_w": 5.5, "dimming": []string{}, "also_known_as": []string{"X-1"}, "provisional": false},
+			Change: map[string]any{"power_w": 6.0, "dimming": []string{"trailing_edge"}}, Wrong: map[string]any{"power_w": -1}},
+		"driver_model": {Body: map[string]any{"code": "X1", "name": "Invented gear", "kind": "electronic_transformer", "output_form": "hf_ac", "output_v": 11.8,
+			"min_load_w": 20.0, "max_load_w": 105.0, "derating": []any{map[string]any{"air_c": 40.0, "share_pct": 100.0}, map[string]any{"air_c": 60.0, "share_pct": 50.0}}, "provisional": false},
+			Change: map[string]any{"max_load_w": 120.0}, Wrong: map[string]any{"min_load_w": 500}},
+		"dimmer_model": {Body: map[string]any{"code": "X1", "name": "Invented dimmer", "kind": "leading_edge", "marking": "RL", "min_load_w": 40.0, "max_load_w": 400.0, "provisional": false},
+			Change: map[string]any{"marking": "RLC"}, Wrong: map[string]any{"marking": "RX"}},
+		"fixture_model": {Body: map[string]any{"code": "X1", "name": "Invented downlight", "holders": 1, "cap": "GU5.3", "gear": "remote", "class": "III", "ip": "IP20", "provisional": false},
+			Change: map[string]any{"ip": "IP65"}, Wrong: map[string]any{"ip": "65"}},
+	} {
+		kind.List, kind.Retire, kind.Unique = "/v1/"+one+"s", true, "code"
+		at := apitest.Exercise(t, admin, kind)
+		list := kind.List
+
+		// Crew add what is on the box; it stays provisional until a planner confirms it, whatever was sent.
+		crew := map[string]any{"code": "BOX-1", "name": "From the box", "provisional": false}
+		made := y.As("crew").Post(list, crew).Want(201)
+		box := made.Header.Get("Location")
+		if made.Object()["provisional"] != true {
+			t.Errorf("%s: crew made a confirmed model: %s", one, made.Body)
+		}
+		admin.Post(list, map[string]any{"code": "BOX-9", "name": "x", "merged_into": at[len(list)+1:]}).Want(422)
+		y.As("crew").Patch(box, `{"name":"Mine"}`, "If-Match: *").Want(403)
+		y.Patch(box, `{"name":"Completed"}`, "If-Match: *").Want(200)
+		y.Post(box+"/confirm", nil, `If-Match: "v99"`).Want(412)
+		y.Post(box+"/confirm", nil).Want(200)
+		y.Post(box+"/confirm", nil).Want(409)
+		y.Patch(box, `{"name":"Changed by a planner"}`, "If-Match: *").Want(403)
+		y.Post(box+"/retire", nil).Want(403)
+		admin.Post(box+"/retire", nil).Want(200)
+		y.Post(box+"/restore", nil).Want(403)
+		admin.Post(box+"/restore", nil).Want(200)
+
+		// Another box of the same is merged into it: uses follow.
+		twin := y.As("crew").Post(list, map[string]any{"code": "BOX-2", "name": "The same"}).Want(201)
+		into := map[string]any{"into": box[len(list)+1:]}
+		y.Post(twin.Header.Get("Location")+"/merge", into, `If-Match: "v99"`).Want(412)
+		y.Post(twin.Header.Get("Location")+"/merge", map[string]any{}).Want(422)
+		y.Post(twin.Header.Get("Location")+"/merge", map[string]any{"into": "01999999-9999-7999-8999-999999999998"}).Want(422)
+		merged := y.Post(twin.Header.Get("Location")+"/merge", into).Want(200).Object()
+		if merged["merged_into"] != into["into"] || merged["retired_at"] == nil {
+			t.Errorf("%s merged as %v", one, merged)
+		}
+		y.Post(twin.Header.Get("Location")+"/merge", into).Want(409)
+		absent := list + "/01999999-9999-7999-8999-999999999999"
+		y.Post(absent+"/confirm", nil).Want(404)
+		y.Post(absent+"/merge", into).Want(404)
+		y.Get(absent + "/uses").Want(404)
+		y.Get(box + "/uses?limit=0").Want(422)
+		y.Get(box + "/uses?limit=%zz").Want(400)
+		if got := y.Get(box + "/uses").Want(200).Object()["items"].([]any); len(got) != 0 {
+			t.Errorf("%s is used by %v", one, got)
+		}
+	}
+
+	// Uses, over two pages, also under the id that was merged.
+	lamp := y.models.Halogen35.ID.String()
+	for _, tag := range []string{"L1", "L2", "L3"} {
+		y.post(t, "/fixtures", map[string]any{"tag": tag, "lamp_model_id": lamp, "lamp_count": 1})
+	}
+	first := y.Get("/v1/lamp_models/" + lamp + "/uses?limit=2").Want(200)
+	if got := first.Object()["items"].([]any); len(got) != 2 {
+		t.Errorf("%d uses on the first page", len(got))
+	}
+	link := first.Header.Get("Link")
+	second := y.Get(strings.TrimSuffix(strings.TrimPrefix(link, "<"), `>; rel="next"`)).Want(200)
+	if got := second.Object()["items"].([]any); len(got) != 1 || got[0].(map[string]any)["tag"] != "L3" || second.Header.Get("Link") != "" {
+		t.Errorf("second page %s", second.Body)
+	}
+	y.Get("/v1/lamp_models/" + lamp + "/uses?cursor=nonsense").Want(422)
+}
+
+func TestPairingsAndPrices(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	admin := y.As("all")
+	apitest.Exercise(t, admin, apitest.Kind{List: "/v1/pairings",
+		Body: map[string]any{"lamp_model_id": y.models.LED7.ID.String(), "driver_model_id": y.models.Electronic60.ID.String(), "least_lamps": 3, "most_lamps": 6,
+			"stated_by": "an invented list", "stated_on": "2026-01-15"},
+		Change: map[string]any{"most_lamps": 5}, Wrong: map[string]any{"most_lamps": 1}, Retire: true, Unique: "lamp_model_id",
+		Values: []any{y.models.Halogen35.ID.String(), y.models.MainsLED9.ID.String()}})
+	apitest.Exercise(t, y.Client, apitest.Kind{List: "/v1/prices",
+		Body:   map[string]any{"model_kind": "lamp", "model_id": y.models.LED7.ID.String(), "from_date": "2026-01-01", "amount": "4.50", "currency": "EUR"},
+		Change: map[string]any{"amount": "4.75"}, Wrong: map[string]any{"currency": "euro"}, Retire: true, Unique: "from_date", Values: []any{"2026-02-01", "2026-03-01"}})
+}
+
+func TestHolders(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	admin := y.As("all")
+	at := apitest.Exercise(t, admin, apitest.Kind{List: "/v1/persons", Body: map[string]any{"name": "An invented person", "email": "ann@example.org"},
+		Change: map[string]any{"email": "bea@example.org"}, Wrong: map[string]any{"email": "not an address"}, Retire: true})
+	person := at[len("/v1/persons/"):]
+	admin.Post(at+"/restore", nil).Want(200)
+
+	asked := map[string]any{"name": "board reader", "person_id": person, "expires_at": "2027-01-01T00:00:00Z",
+		"grants": []any{map[string]any{"role": "integrator", "building_id": buildingA.String(), "until": "2026-12-01T00:00:00Z"}}}
+	made := admin.Post("/v1/keys", asked, "Idempotency-Key: one").Want(201)
+	secret := made.Object()["secret"].(string)
+	if again := admin.Post("/v1/keys", asked, "Idempotency-Key: one").Want(201); string(again.Body) != string(made.Body) {
+		t.Error("a repeat makes another key")
+	}
+	admin.Post("/v1/keys", asked, "Idempotency-Key: two words").Want(400)
+	admin.Post("/v1/keys", map[string]any{"name": "nothing", "grants": []any{}}).Want(422)
+	key := made.Header.Get("Location")
+	if strings.Contains(string(admin.Get("/v1/keys").Want(200).Body), secret) || strings.Contains(string(admin.Get(key).Want(200).Body), secret) {
+		t.Error("the secret is shown again")
+	}
+	tag := admin.Get(key).ETag()
+	admin.Get(key, "If-None-Match: "+tag).Want(304)
+	admin.Get(key, "If-None-Match: v1").Want(400)
+	admin.Get("/v1/keys/01999999-9999-7999-8999-999999999999").Want(404)
+	admin.Get("/v1/keys?person_id=7").Want(422)
+	admin.Get("/v1/keys?person_id=%zz").Want(400)
+
+	grants := admin.Get("/v1/grants?building_id=" + buildingA.String()).Want(200).Object()["items"].([]any)
+	if len(grants) != 1 {
+		t.Fatalf("grants %v", grants)
+	}
+	grant := map[string]any{"person_id": person, "role": "planner", "building_id": buildingB.String()}
+	own := map[string]any{"id": "01999999-9999-7999-8999-00000000000c", "person_id": person, "role": "crew"}
+	one := admin.Post("/v1/grants", grant).Want(201)
+	admin.Post("/v1/grants", own).Want(201)
+	own["role"] = "viewer"
+	admin.Post("/v1/grants", own).Want(409)
+	admin.Post("/v1/grants", grant, "Idempotency-Key: two words").Want(400)
+	admin.Post("/v1/grants", map[string]any{"person_id": person, "role": "owner"}).Want(422)
+	admin.Post("/v1/grants", map[string]any{"person_id": person, "role": "crew", "building_id": "01999999-9999-7999-8999-999999999999"}).Want(422)
+	g := one.Header.Get("Location")
+	admin.Get(g, "If-None-Match: "+one.ETag()).Want(304)
+	admin.Get(g).Want(200)
+	admin.Get(g, "If-None-Match: v1").Want(400)
+	admin.Get("/v1/grants/01999999-9999-7999-8999-999999999999").Want(404)
+	admin.Get("/v1/grants?person_id=%zz").Want(400)
+	admin.Get("/v1/grants?role=crew").Want(422)
+	for _, rec := range []string{key, g} {
+		admin.Post(rec+"/withdraw", nil, `If-Match: "v99"`).Want(412)
+		ended := admin.Post(rec+"/withdraw", nil).Want(200)
+		if again := admin.Post(rec+"/withdraw", nil).Want(200); string(again.Body) != string(ended.Body) || ended.Object()["retired_at"] == nil {
+			t.Errorf("withdrawn as %s, again %s", ended.Body, again.Body)
+		}
+	}
+	admin.Post("/v1/keys/01999999-9999-7999-8999-999999999999/withdraw", nil).Want(404)
+	admin.Post("/v1/grants/01999999-9999-7999-8999-999999999999/withdraw", nil).Want(404)
+}
