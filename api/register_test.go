@@ -74,6 +74,7 @@ func TestPlaces(t *testing.T) {
 	control := apitest.Exercise(t, y.Client, apitest.Kind{List: atA + "/controls",
 		Body: map[string]any{"dimmer_id": dim, "place_id": g, "path": "power_path"}, Change: map[string]any{"voltage_found": "mains"},
 		Wrong: map[string]any{"path": "air"}, Retire: true})
+	y.Post(control+"/retire", nil).Want(200)
 	y.Patch(control, `{"note":"while retired"}`, "If-Match: *").Want(409)
 	y.Put(control, map[string]any{"dimmer_id": dim, "place_id": g, "path": "power_path"}, "If-Match: *").Want(409)
 	y.Post(control+"/restore", nil).Want(200)
@@ -81,6 +82,7 @@ func TestPlaces(t *testing.T) {
 	feed := apitest.Exercise(t, y.Client, apitest.Kind{List: atA + "/feeds",
 		Body:   map[string]any{"place_id": fixture[len(atA+"/fixtures/"):], "from_circuit_id": circuit, "purpose": "permanent_live", "input": "L2"},
 		Change: map[string]any{"input": "L3"}, Wrong: map[string]any{"purpose": "fun"}, Retire: true})
+	y.Post(feed+"/retire", nil).Want(200)
 	y.Patch(feed, `{"note":"while retired"}`, "If-Match: *").Want(409)
 	y.Put(feed, map[string]any{"place_id": fixture[len(atA+"/fixtures/"):], "from_circuit_id": circuit, "purpose": "normal"}, "If-Match: *").Want(409)
 	y.Post(feed+"/restore", nil).Want(200)
