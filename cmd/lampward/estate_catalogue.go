@@ -159,12 +159,12 @@ func inventedModels() *estateModels {
 	current("CC700", "LED driver, 700 mA", 700, 25, nil)
 	current("CC500N", "LED driver, 500 mA, without separation", 500, 40, func(g *loading.Gear) { g.Separation = "none" })
 	m.driver("MB58", "Magnetic ballast, 58 W", loading.MagneticBallast, loading.OutputMainsAC, 0, 0, 60, func(g *loading.Gear) {
-		g.Separation, g.PowerFactor, g.OutputLeadM, g.InrushA = "none", of(0.9), nil, of(8.0)
+		g.Separation, g.PowerFactor, g.OutputLeadM, g.InrushA, g.MaxLoadVA = "none", of(0.9), nil, of(8.0), nil
 	})
 	m.driver("EB2X58", "Electronic ballast for two tubes, 116 W", loading.ElectronicBallast, loading.OutputHFAC, 0, 0, 116, func(g *loading.Gear) {
-		g.Separation, g.InrushA, g.LeakageMA, g.OutputLeadM = "none", of(30.0), of(0.5), nil
+		g.Separation, g.InrushA, g.LeakageMA, g.OutputLeadM, g.MaxLoadVA = "none", of(30.0), of(0.5), nil, nil
 	})
-	m.driver("HG150", "Discharge gear with ignitor, 150 W", loading.HIDGearWithIgnitor, loading.OutputMainsAC, 0, 0, 150, func(g *loading.Gear) { g.Separation, g.OutputLeadM = "none", nil })
+	m.driver("HG150", "Discharge gear with ignitor, 150 W", loading.HIDGearWithIgnitor, loading.OutputMainsAC, 0, 0, 150, func(g *loading.Gear) { g.Separation, g.OutputLeadM, g.MaxLoadVA = "none", nil, nil })
 	m.driver("LEDLOWPF", "LED driver of low power factor, 20 W", loading.LEDConstantVoltage, loading.OutputDC, 24, 0, 20, func(g *loading.Gear) { g.PowerFactor = of(0.55) })
 
 	m.dimmer("LE400", "Leading-edge dimmer, 40 to 400 W", loading.LeadingEdge, func(c *loading.Control) {
