@@ -17,7 +17,7 @@ const (
 var outputRules = []Rule{
 	{
 		ID: "output_voltage_mismatch", Severity: High, Blocks: true, Subject: OnDriver,
-		Trigger:  "gear of one nominal voltage on lamps of another, e.g. 24 V on a 12 V lamp or the reverse",
+		Trigger:  "gear of one nominal voltage on lamps of another, e.g. 24 V on a 12 V lamp or the reverse; a ballast on lamps for a voltage supply, or a voltage supply on lamps for a ballast",
 		Why:      "Twice the voltage is three times the power of a filament and the end of an LED; half of it is a dim or dark lamp.",
 		Basis:    "nameplates; a 5 % match of dc supplies is common practice",
 		Remedy:   "Match the lamp's voltage and the gear's.",
@@ -205,6 +205,7 @@ func (l *lampLoad) onVoltage() bool {
 }
 
 func outputVoltageMismatch(v *driverView) {
+	wrongGear(v)
 	if !v.kind.voltageSource() {
 		return
 	}
@@ -251,6 +252,37 @@ func outputVoltageMismatch(v *driverView) {
 			f.say("%s of %s %s on %s of %s; they should lie within 5 %%.", plural(l.count, "lamp"), quantity(rated, "V"), v.verb(l.count, "hangs", "hang"), v.name(), quantity(out, "V"))
 			f.step("output against the lamp's rating", loading.Figure(out)+" / "+loading.Figure(rated)+" = "+loading.Percent(out/rated), "common practice, no source")
 		}
+	}
+}
+
+// wrongGear finds lamps whose stated supply is of another kind than the gear gives: a ballast or discharge gear limits a
+// discharge, it holds no voltage; a transformer or constant-voltage driver limits none.
+func wrongGear(v *driverView) {
+	for i := range v.lamps {
+		l := &v.lamps[i]
+		if l.model == nil {
+			continue
+		}
+		needs := ""
+		switch v.kind {
+		case magneticBallast, electronicBallast, hidGear:
+			switch l.model.Supply {
+			case loading.SupplyELVAC, loading.SupplyELVDC, loading.SupplyELVACDC:
+				needs = "extra-low voltage"
+			case loading.SupplyConstantCurrent:
+				needs = "a constant current"
+			}
+		default:
+			if v.kind.voltageSource() && l.model.Supply == loading.SupplyGear {
+				needs = "a ballast"
+			}
+		}
+		if needs == "" {
+			continue
+		}
+		f := v.foundLamp(l, High, judgement{fails: true, sure: Recorded})
+		f.say("%s that %s %s %s on %s.", plural(l.count, "lamp"), v.verb(l.count, "needs", "need"), needs, v.verb(l.count, "hangs", "hang"), v.name())
+		f.step("gear and lamp", "lamp: needs "+needs+"; gear: "+v.kind.word(), "nameplates")
 	}
 }
 

@@ -58,6 +58,10 @@ func TestOutputRules(t *testing.T) {
 			{name: "12 V lamp straight on the mains", build: func(r *rig) { r.straight(-1, nil, of(1, halogen12(20))) }, findings: 1, severity: High, blocks: true, sure: Recorded, says: "straight on 230 V"},
 			{name: "mains lamp straight on the mains", build: func(r *rig) { r.straight(-1, nil, of(1, mainsHalogen(20))) }},
 			{name: "mains unknown", build: func(r *rig) { r.MainsV = nil; r.straight(-1, nil, of(1, halogen12(20))) }, asks: []Field{FieldCircuitV}},
+			{name: "12 V lamp on a ballast", build: fed(loading.Gear{Kind: loading.MagneticBallast}, of(1, led12(7))), findings: 1, severity: High, blocks: true, sure: Recorded, says: "extra-low voltage"},
+			{name: "module on a ballast", build: fed(loading.Gear{Kind: loading.ElectronicBallast}, of(1, module())), findings: 1, severity: High, blocks: true, sure: Recorded, says: "a constant current"},
+			{name: "lamp for a ballast on a ballast", build: fed(loading.Gear{Kind: loading.MagneticBallast}, of(1, loading.Lamp{Technology: loading.Fluorescent, Supply: loading.SupplyGear}))},
+			{name: "lamp for a ballast on 12 V", build: fed(v12(60), of(1, loading.Lamp{Technology: loading.Fluorescent, Supply: loading.SupplyGear})), findings: 1, severity: High, blocks: true, sure: Recorded, says: "a ballast"},
 		},
 		"dc_lamp_on_ac": {
 			// √2 × 12 − 1.4 = 15.57 V.

@@ -364,6 +364,9 @@ func (e *Edit) UpdateControl(ctx context.Context, l *ControlLink) error {
 	if err != nil {
 		return err
 	}
+	if l.Position == 0 {
+		l.Position = 1
+	}
 	if err := l.Validate(); err != nil {
 		return err
 	}

@@ -103,3 +103,16 @@ func CountByRule(ctx context.Context, db domain.Queryer) (map[string]int, error)
 	}
 	return out, domain.Classify(rows.Err(), "finding")
 }
+
+// StepsOf returns the arithmetic of the finding that speaks for a cause: the one with the most lamps.
+func StepsOf(ctx context.Context, db domain.Queryer, c Cause) ([]Step, error) {
+	var steps []Step
+	err := db.QueryRow(ctx, `
+		SELECT steps
+		  FROM finding
+		 WHERE rule = $1 AND lamp_model_id IS NOT DISTINCT FROM $2 AND driver_model_id IS NOT DISTINCT FROM $3
+		   AND dimmer_model_id IS NOT DISTINCT FROM $4 AND cleared_at IS NULL
+		 ORDER BY lamps DESC, id
+		 LIMIT 1`, c.Rule, c.LampModelID, c.DriverModelID, c.DimmerModelID).Scan(&steps)
+	return steps, domain.Classify(err, "finding")
+}

@@ -8,8 +8,12 @@ import (
 	"lampward/domain"
 )
 
-// Fits is the answer that what was asked for may be fitted as it stands.
-const Fits = string(retrofit.Fit)
+// Answers to "may I fit this here?".
+const (
+	Fits       = string(retrofit.Fit)
+	FitsOnlyIf = string(retrofit.FitOnlyIf)
+	DoesNotFit = string(retrofit.DoNotFit)
+)
 
 // A Rule is an entry of the table of rules as it is shown.
 type Rule struct {
