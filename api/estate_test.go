@@ -4,11 +4,13 @@ import (
 	"context"
 	"strings"
 	"testing"
+	"time"
 
 	"lampward/api/apitest"
 	"lampward/calc/loading"
 	"lampward/domain"
 	"lampward/domain/domaintest"
+	"lampward/domain/review"
 	"lampward/domain/site"
 )
 
@@ -142,6 +144,12 @@ func TestModels(t *testing.T) {
 			t.Errorf("%s merged as %v", one, merged)
 		}
 		y.Post(twin.Header.Get("Location")+"/merge", into).Want(409)
+		admin.Post(twin.Header.Get("Location")+"/restore", nil).Want(409)
+		admin.Patch(twin.Header.Get("Location"), `{"note":"x"}`, "If-Match: *").Want(409)
+		if got := admin.Patch(box, map[string]any{"merged_into": at[len(list)+1:]}, "If-Match: *").Want(422).Pointers(); strings.Join(got, " ") != "/merged_into" {
+			t.Errorf("%s: merging by a change is refused at %v", one, got)
+		}
+		y.Post(box+"/merge", map[string]any{"into": at[len(list)+1:]}).Want(403) // confirmed: not a planner's to merge away
 		absent := list + "/01999999-9999-7999-8999-999999999999"
 		y.Post(absent+"/confirm", nil).Want(404)
 		y.Post(absent+"/merge", into).Want(404)
@@ -182,6 +190,61 @@ func TestPairingsAndPrices(t *testing.T) {
 	apitest.Exercise(t, y.Client, apitest.Kind{List: "/v1/prices",
 		Body:   map[string]any{"model_kind": "lamp", "model_id": y.models.LED7.ID.String(), "from_date": "2026-01-01", "amount": "4.50", "currency": "EUR"},
 		Change: map[string]any{"amount": "4.75"}, Wrong: map[string]any{"currency": "euro"}, Retire: true, Unique: "from_date", Values: []any{"2026-02-01", "2026-03-01"}})
+}
+
+// TestCatalogueChangesOweReviews holds that a change of the catalogue asks for a review of what holds the record now and
+// of what held it before, that what changes no judgement asks for none, and that a model which does not exist is told.
+func TestCatalogueChangesOweReviews(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	admin := y.As("all")
+	reviewer := review.New()
+	owed := func(what string, want int) {
+		t.Helper()
+		due, _, err := review.Pending(t.Context(), y.pool, now)
+		if err != nil {
+			t.Fatal(err)
+		}
+		if due != want {
+			t.Errorf("%s: %d reviews are owed, want %d", what, due, want)
+		}
+		for more := true; more; {
+			if more, err = reviewer.DrainOne(t.Context(), y.pool, func() time.Time { return now }); err != nil {
+				t.Fatal(err)
+			}
+		}
+	}
+	owed("the models of the yard", 10)
+	m := y.models
+	pairing := admin.Post("/v1/pairings", map[string]any{"lamp_model_id": m.LED7.ID.String(), "driver_model_id": m.Electronic60.ID.String(), "stated_by": "an invented list"}).
+		Want(201).Header.Get("Location")
+	owed("a new pairing", 1)
+	admin.Patch(pairing, map[string]any{"lamp_model_id": m.LED7DC.ID.String()}, "If-Match: *").Want(200)
+	owed("a pairing of another lamp", 2)
+	admin.Patch(pairing, `{"note":"seen"}`, "If-Match: *").Want(200)
+	owed("a pairing of the same lamp", 1)
+	use := admin.Post("/v1/space_uses", map[string]any{"use": "reading room", "yearly_hours": 3600.0}).Want(201).Header.Get("Location")
+	owed("a new use", 1)
+	admin.Patch(use, `{"yearly_hours":2000}`, "If-Match: *").Want(200)
+	owed("other hours of a use", 1)
+	admin.Patch(use, `{"required_lx":300}`, "If-Match: *").Want(200)
+	owed("other light of a use", 0)
+	price := map[string]any{"model_kind": "lamp", "model_id": m.LED7.ID.String(), "from_date": "2026-01-01", "amount": "4.50", "currency": "EUR"}
+	y.Post("/v1/prices", price).Want(201)
+	owed("a price", 0)
+
+	// What is named must be there, and be of that kind.
+	price["model_id"] = m.Electronic60.ID.String()
+	if got := y.Post("/v1/prices", price).Want(422).Pointers(); strings.Join(got, " ") != "/model_id" {
+		t.Errorf("the price of a driver among lamps is refused at %v", got)
+	}
+	lost := "01999999-9999-7999-8999-999999999999"
+	bad := admin.Post("/v1/pairings", map[string]any{"lamp_model_id": lost, "driver_model_id": lost, "dimmer_model_id": m.LeadingEdge.ID.String(), "stated_by": "x"}).Want(422)
+	if got := strings.Join(bad.Pointers(), " "); got != "/driver_model_id /lamp_model_id" {
+		t.Errorf("a pairing of nothing is refused at %s", got)
+	}
+	admin.Post("/v1/fixture_models", map[string]any{"code": "F9", "name": "x", "gear": "integral", "driver_model_id": lost}).Want(422)
+	owed("what was refused", 0)
 }
 
 func TestHolders(t *testing.T) {

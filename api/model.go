@@ -85,6 +85,10 @@ func models[T any, P model[T]](s *Server, one, kind string, t *domain.Table[T], 
 					return reply{}, err
 				}
 				return actOn(c, r, func(c *call, sc domain.Scope, id domain.ID, version int64) (T, error) {
+					if err := settled[T, P](c, sc, t, id); err != nil {
+						var none T
+						return none, err
+					}
 					return plant.MergeModel[T, P](c.ctx, sc, t, id, b.Into, version, one)
 				})
 			}},
@@ -109,7 +113,7 @@ func settled[T any, P model[T]](c *call, sc domain.Scope, t *domain.Table[T], id
 	if err != nil {
 		return err
 	}
-	if !P(&row).Head().Provisional {
+	if h := P(&row).Head(); !h.Provisional && h.MergedInto == nil { // what was merged nobody changes, and the room says so
 		return &domain.Error{Kind: domain.Denied, Msg: "this model is confirmed: only an administrator changes it"}
 	}
 	return nil

@@ -169,7 +169,7 @@ func CreateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 		h.ID = domain.NewID()
 	}
 	h.Version, h.CreatedAt, h.UpdatedAt, h.RetiredAt = 1, s.At, s.At, nil
-	if err := row.Validate(); err != nil {
+	if err := valid(ctx, s, t.What, row); err != nil {
 		return err
 	}
 	if err := t.Insert(ctx, s, (*T)(row)); err != nil {
@@ -179,8 +179,43 @@ func CreateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 	return raise(ctx, s, kind, row)
 }
 
+// valid holds a record of the catalogue against its own rules, then against the models it names.
+func valid(ctx context.Context, s domain.Scope, what string, row interface{ Validate() error }) error {
+	if err := row.Validate(); err != nil {
+		return err
+	}
+	type name struct {
+		field, table string
+		id           *domain.ID
+	}
+	var names []name
+	switch r := row.(type) {
+	case *Pairing:
+		names = []name{{"lamp_model_id", LampModels.Name, r.LampModelID}, {"driver_model_id", DriverModels.Name, r.DriverModelID},
+			{"dimmer_model_id", DimmerModels.Name, r.DimmerModelID}}
+	case *Price:
+		names = []name{{"model_id", r.ModelKind + "_model", &r.ModelID}}
+	case *FixtureModel:
+		names = []name{{"driver_model_id", DriverModels.Name, r.DriverModelID}}
+	}
+	c := domain.NewCheck(what)
+	for _, n := range names {
+		if n.id == nil {
+			continue
+		}
+		var there bool
+		if err := s.QueryRow(ctx, `SELECT EXISTS (SELECT FROM `+n.table+` WHERE id = $1)`, *n.id).Scan(&there); err != nil {
+			return domain.Classify(err, what)
+		}
+		if !there {
+			c.Add("/"+n.field, "names no model of this kind")
+		}
+	}
+	return c.Err()
+}
+
 // UpdateModel stores a changed record of the catalogue if the stored version is still its own, and asks for a review
-// of the trees that hold it.
+// of the trees that hold it or held it before. Whether a model is provisional or merged is not changed here.
 func UpdateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t *domain.Table[T], row P, kind string) error {
 	h := row.CatalogueHead()
 	before, err := t.Lock(ctx, s, h.ID)
@@ -191,16 +226,23 @@ func UpdateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 	h.CreatedAt, h.UpdatedAt, h.RetiredAt = was.CreatedAt, s.At, was.RetiredAt
 	if m, ok := any(row).(interface{ Head() *ModelHead }); ok {
 		old := any(P(&before)).(interface{ Head() *ModelHead }).Head()
-		m.Head().Provisional, m.Head().MergedInto = old.Provisional, old.MergedInto
+		if old.MergedInto != nil {
+			return domain.Conflictf("the %s was merged into another one; change that one", t.What)
+		}
+		if m.Head().MergedInto != nil {
+			return &domain.Error{Kind: domain.Invalid, Msg: "the " + t.What + " is not valid",
+				Fields: []domain.Field{{Pointer: "/merged_into", Detail: "is set by merging: leave it out"}}}
+		}
+		m.Head().Provisional = old.Provisional
 	}
-	if err := row.Validate(); err != nil {
+	if err := valid(ctx, s, t.What, row); err != nil {
 		return err
 	}
 	if err := t.Update(ctx, s, (*T)(row)); err != nil {
 		return err
 	}
 	event.Record(s, event.Act{Action: kind + ".changed", Kind: kind, ID: h.ID, Body: event.Changed(&before, row)})
-	return raise(ctx, s, kind, row)
+	return raise(ctx, s, kind, P(&before), row)
 }
 
 // RetireModel takes a record of the catalogue out of the lists people choose from, or back in where restore is true.
@@ -216,6 +258,9 @@ func RetireModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 	}
 	h.Version, h.UpdatedAt, h.RetiredAt = version, s.At, &s.At
 	action := kind + ".retired"
+	if m, ok := any(P(&row)).(interface{ Head() *ModelHead }); ok && m.Head().MergedInto != nil {
+		return row, domain.Conflictf("the %s was merged into another one and goes by that one's name for good", t.What)
+	}
 	if restore {
 		h.RetiredAt, action = nil, kind+".restored"
 	}
@@ -226,32 +271,57 @@ func RetireModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 	return row, raise(ctx, s, kind, P(&row))
 }
 
-// raise counts a change of the catalogue and asks for the reviews it makes necessary. A price makes none.
-func raise(ctx context.Context, s domain.Scope, kind string, row any) error {
+// raise counts a change of the catalogue and asks for the reviews it makes necessary: of what holds the record as it
+// stands now and, where it was changed, as it stood before. A price makes none.
+func raise(ctx context.Context, s domain.Scope, kind string, rows ...any) error {
 	if _, err := s.Exec(ctx, `UPDATE catalogue_head SET seq = seq + 1 WHERE id = 1`); err != nil {
 		return domain.Classify(err, "catalogue")
 	}
-	due := event.Due{Why: kind + " changed"}
-	switch m := row.(type) {
-	case *Price, *site.SpaceUse:
-		return nil
-	case *Pairing:
-		switch {
-		case m.LampModelID != nil:
-			due.ModelKind, due.Model = KindLamp, m.LampModelID
-		default:
-			due.ModelKind, due.Model = KindDriver, m.DriverModelID
-		}
-	case *LampModel:
-		due.ModelKind, due.Model = KindLamp, &m.ID
-	case *DriverModel:
-		due.ModelKind, due.Model = KindDriver, &m.ID
-	case *DimmerModel:
-		due.ModelKind, due.Model = KindDimmer, &m.ID
-	case *FixtureModel:
-		due.ModelKind, due.Model = KindFixture, &m.ID
+	type holder struct {
+		kind  string
+		model domain.ID
 	}
-	return event.ReviewDue(ctx, s, due)
+	owed := map[holder]bool{}
+	for _, row := range rows {
+		var h holder
+		switch m := row.(type) {
+		case *Price:
+			return nil
+		case *site.SpaceUse:
+			// Its hours are those of every space of that use, in any building.
+			if len(rows) == 2 && sameHours(rows[0].(*site.SpaceUse), rows[1].(*site.SpaceUse)) {
+				return nil
+			}
+			return event.ReviewDue(ctx, s, event.Due{Why: kind + " changed"})
+		case *Pairing:
+			h = holder{KindDriver, domain.ID{}}
+			if m.LampModelID != nil {
+				h = holder{KindLamp, *m.LampModelID}
+			} else if m.DriverModelID != nil {
+				h.model = *m.DriverModelID
+			}
+		case *LampModel:
+			h = holder{KindLamp, m.ID}
+		case *DriverModel:
+			h = holder{KindDriver, m.ID}
+		case *DimmerModel:
+			h = holder{KindDimmer, m.ID}
+		case *FixtureModel:
+			h = holder{KindFixture, m.ID}
+		}
+		if owed[h] {
+			continue
+		}
+		owed[h] = true
+		if err := event.ReviewDue(ctx, s, event.Due{ModelKind: h.kind, Model: &h.model, Why: kind + " changed"}); err != nil {
+			return err
+		}
+	}
+	return nil
+}
+
+func sameHours(a, b *site.SpaceUse) bool {
+	return a.Use == b.Use && (a.YearlyHours == nil) == (b.YearlyHours == nil) && (a.YearlyHours == nil || *a.YearlyHours == *b.YearlyHours)
 }
 
 // MergeModel marks a model as being another one: reads follow it at once, places are pointed to it by a job.
