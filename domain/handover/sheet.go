@@ -25,7 +25,6 @@ type column struct {
 	path []int
 	typ  reflect.Type
 	ref  string // kind of record that an identifier names, empty for plain values
-	note string
 }
 
 // refNames are the identifiers that are shown by name, and what they name.
@@ -67,10 +66,9 @@ func (f *sheetForm) walk(typ reflect.Type, path []int, withID bool) {
 }
 
 var (
-	timeType    = reflect.TypeFor[time.Time]()
-	dateType    = reflect.TypeFor[domain.Date]()
-	decimalType = reflect.TypeFor[domain.Decimal]()
-	idType      = reflect.TypeFor[domain.ID]()
+	timeType = reflect.TypeFor[time.Time]()
+	dateType = reflect.TypeFor[domain.Date]()
+	idType   = reflect.TypeFor[domain.ID]()
 )
 
 // none is how a sheet says "somebody looked and there is none" for a list.
@@ -137,7 +135,9 @@ func (c *column) write(v reflect.Value, name func(kind string, id domain.ID) str
 }
 
 // errExpected says what a cell should hold.
-func errExpected(format string, a ...any) error { return errors.New("must be " + fmt.Sprintf(format, a...)) }
+func errExpected(format string, a ...any) error {
+	return errors.New("must be " + fmt.Sprintf(format, a...))
+}
 
 // read sets a value from the text of a cell. An empty cell and "n/a" leave it absent.
 func (c *column) read(v reflect.Value, text string, find func(kind, name string) (domain.ID, error)) error {

@@ -67,8 +67,12 @@ func parseSurvey(b *Book) (*Register, error) {
 	r.Drivers = models(r, b, gearSheet, "driver_model", func(m *plant.DriverModel) (*plant.ModelHead, error) { return &m.ModelHead, m.Validate() })
 	r.Dimmers = models(r, b, controlsSheet, "dimmer_model", func(m *plant.DimmerModel) (*plant.ModelHead, error) { return &m.ModelHead, m.Validate() })
 	r.Fixtures = models(r, b, fittingsSheet, "fixture_model", func(m *plant.FixtureModel) (*plant.ModelHead, error) { return &m.ModelHead, m.Validate() })
-	r.Bulk.Spaces = records(r, b, spacesSheet, "space", func(p *site.Space) (*domain.Row, string, error) { return &p.Row, spaceName(p.Level, p.Name), p.Validate() })
-	r.Bulk.Circuits = records(r, b, circuitsSheet, "circuit", func(k *plant.Circuit) (*domain.Row, string, error) { return &k.Row, k.Board + "/" + k.Way, k.Validate() })
+	r.Bulk.Spaces = records(r, b, spacesSheet, "space", func(p *site.Space) (*domain.Row, string, error) {
+		return &p.Row, spaceName(p.Level, p.Name), p.Validate()
+	})
+	r.Bulk.Circuits = records(r, b, circuitsSheet, "circuit", func(k *plant.Circuit) (*domain.Row, string, error) {
+		return &k.Row, k.Board + "/" + k.Way, k.Validate()
+	})
 	r.Bulk.MakeUps = records(r, b, makeUpsSheet, "make_up", func(m *plant.MakeUp) (*domain.Row, string, error) { return &m.Row, m.Name, m.Validate() })
 	r.places(b)
 	r.Bulk.Feeds = records(r, b, feedsSheet, "feed", func(f *plant.Feed) (*domain.Row, string, error) { return &f.Row, "", f.Validate() })
