@@ -71,6 +71,10 @@ func TestBuildings(t *testing.T) {
 	if len(all["buildings"].([]any)) < 2 || all["pending"] != true {
 		t.Errorf("summary %v", all)
 	}
+	own := y.Get("/v1/summary").Want(200).Object()
+	if own["luminaires"] != 1.0 || own["reviews_pending"].(float64) < 1 || own["coverage"].(map[string]any)["places"] != 1.0 {
+		t.Errorf("one luminaire and the reviews of the yard's models: %v", own)
+	}
 	if own := y.Get("/v1/summary").Want(200).Object()["buildings"].([]any); len(own) != 1 {
 		t.Errorf("the planner's summary has %d buildings", len(own))
 	}
