@@ -87,6 +87,9 @@ func (o Operation) Statuses() []int {
 	return out
 }
 
+// TakesBody reports whether the operation reads a body.
+func (o Operation) TakesBody() bool { return o.op.RequestBody != nil }
+
 // bodyMedia is the first media type of the request body in the order of names, empty where there is no body.
 func (o Operation) bodyMedia() string {
 	if o.op.RequestBody == nil {
