@@ -11,6 +11,7 @@ import (
 	"flag"
 	"fmt"
 	"io"
+	"maps"
 	"net/http"
 	"os"
 	"regexp"
@@ -87,23 +88,43 @@ func (o Operation) Statuses() []int {
 	return out
 }
 
-// TakesBody reports whether the operation reads a body.
-func (o Operation) TakesBody() bool { return o.op.RequestBody != nil }
+// Field is a property of a request body: its type, and what narrows it.
+type Field struct {
+	Name, Type, Format string
+	Enum               []any
+}
 
-// bodyMedia is the first media type of the request body in the order of names, empty where there is no body.
-func (o Operation) bodyMedia() string {
+// Fields returns the properties of the body that the operation reads, in the order of their names.
+func (o Operation) Fields() []Field {
 	if o.op.RequestBody == nil {
-		return ""
+		return nil
 	}
-	var media []string
-	for m := range o.op.RequestBody.Value.Content {
-		media = append(media, m)
+	out := map[string]Field{}
+	var gather func(ref *openapi3.SchemaRef)
+	gather = func(ref *openapi3.SchemaRef) {
+		for _, part := range ref.Value.AllOf {
+			gather(part)
+		}
+		for name, p := range ref.Value.Properties {
+			f := Field{Name: name, Format: p.Value.Format, Enum: p.Value.Enum}
+			if p.Value.Type != nil && len(*p.Value.Type) > 0 {
+				f.Type = (*p.Value.Type)[0]
+			}
+			out[name] = f
+		}
 	}
-	slices.Sort(media)
-	if len(media) == 0 {
-		return ""
+	for _, m := range o.op.RequestBody.Value.Content {
+		gather(m.Schema)
 	}
-	return media[0]
+	return slices.SortedFunc(maps.Values(out), func(a, b Field) int { return strings.Compare(a.Name, b.Name) })
+}
+
+// BodyMedia returns the media types of the body that the operation reads, in the order of their names.
+func (o Operation) BodyMedia() []string {
+	if o.op.RequestBody == nil {
+		return nil
+	}
+	return slices.Sorted(maps.Keys(o.op.RequestBody.Value.Content))
 }
 
 var braces = regexp.MustCompile(`\{([a-z_]+)\}`)
