@@ -35,7 +35,7 @@ func newStreet(t *testing.T) *street {
 	y.Client = y.As(first)
 	st := &street{yard: y, records: map[domain.ID]map[string]string{}}
 	for _, b := range []domain.ID{buildingA, buildingB} {
-		st.records[b] = st.furnish(t, "/v1/buildings/"+b.String())
+		st.records[b] = st.furnish(t, "/v1/buildings/"+b.String(), "1")
 	}
 	idOf := func(path string, body map[string]any) string {
 		return y.Post(path, body).Want(201).Object()["id"].(string)
@@ -55,8 +55,8 @@ func newStreet(t *testing.T) *street {
 }
 
 // furnish records one of everything in a building: a dimmed electronic transformer (35 to 105 W) that feeds a halogen lamp
-// swapped for a 7 W LED, so that there are findings.
-func (s *street) furnish(t *testing.T, at string) map[string]string {
+// swapped for a 7 W LED, so that there are findings. n, a digit, tells the records of several calls apart.
+func (s *street) furnish(t *testing.T, at, n string) map[string]string {
 	t.Helper()
 	post := func(path string, body map[string]any) map[string]any {
 		t.Helper()
@@ -64,8 +64,8 @@ func (s *street) furnish(t *testing.T, at string) map[string]string {
 	}
 	m, r := s.models, map[string]string{}
 	make := func(param, path string, body map[string]any) { t.Helper(); r[param] = post(path, body)["id"].(string) }
-	make("space_id", "/spaces", map[string]any{"name": "Hall", "level": "0"})
-	make("circuit_id", "/circuits", map[string]any{"board": "DB1", "way": "1"})
+	make("space_id", "/spaces", map[string]any{"name": "Hall " + n, "level": "0"})
+	make("circuit_id", "/circuits", map[string]any{"board": "DB1", "way": n})
 	make("dimmer_id", "/dimmers", map[string]any{"dimmer_model_id": m.LeadingEdge.ID.String(), "fed_by_circuit_id": r["circuit_id"]})
 	make("driver_id", "/drivers", map[string]any{"driver_model_id": m.Electronic105.ID.String(), "fed_by_circuit_id": r["circuit_id"]})
 	make("fixture_id", "/fixtures", map[string]any{"space_id": r["space_id"], "fed_by_place_id": r["driver_id"], "gear": "remote", "fixture_model_id": m.Downlight.ID.String(),
@@ -73,15 +73,15 @@ func (s *street) furnish(t *testing.T, at string) map[string]string {
 	r["place_id"] = r["fixture_id"]
 	make("control_id", "/controls", map[string]any{"dimmer_id": r["dimmer_id"], "place_id": r["driver_id"], "path": "power_path"})
 	make("feed_id", "/feeds", map[string]any{"place_id": r["fixture_id"], "from_circuit_id": r["circuit_id"], "purpose": "permanent_live", "input": "L2"})
-	make("make_up_id", "/make_ups", map[string]any{"name": "Single", "fixture_model_id": m.Downlight.ID.String(), "gear": "remote", "lamp_count": 1})
-	make("rate_id", "/rates", map[string]any{"rate": "energy_per_kwh", "from_date": "2026-01-01", "amount": "0.31", "currency": "EUR"})
+	make("make_up_id", "/make_ups", map[string]any{"name": "Single " + n, "fixture_model_id": m.Downlight.ID.String(), "gear": "remote", "lamp_count": 1})
+	make("rate_id", "/rates", map[string]any{"rate": "energy_per_kwh", "from_date": "2026-01-0" + n, "amount": "0.31", "currency": "EUR"})
 	swap := map[string]any{"part": "lamp", "holder": 1, "model_id": m.LED7.ID.String(), "done_at": "2026-02-01T10:00:00Z"}
 	r["unit_id"] = s.Post(at+"/places/"+r["place_id"]+"/swap", swap).Want(200).Object()["unit"].(map[string]any)["id"].(string)
 	make("failure_id", "/failures", map[string]any{"place_id": r["place_id"], "part": "lamp", "holder": 1, "mode": "flicker", "noticed_at": "2026-02-20T09:00:00Z"})
 	make("emergency_test_id", "/emergency_tests", map[string]any{"place_id": r["place_id"], "test": "function", "tested_at": "2026-02-20T09:00:00Z", "passed": true})
 	make("trip_id", "/trips", map[string]any{"circuit_id": r["circuit_id"], "tripped_at": "2026-02-20T09:00:00Z"})
-	make("beacon_id", "/beacons", map[string]any{"tag": "B1"})
-	r["finding_id"] = s.Get(at + "/findings").Want(200).Object()["items"].([]any)[0].(map[string]any)["id"].(string)
+	make("beacon_id", "/beacons", map[string]any{"tag": "B" + n})
+	r["finding_id"] = s.Get(at + "/findings?waived=false").Want(200).Object()["items"].([]any)[0].(map[string]any)["id"].(string)
 	waived := post("/waivers", map[string]any{"finding_ids": []any{r["finding_id"]}, "why": "to be replaced", "until": "2026-06-30"})
 	r["waiver_id"] = waived["items"].([]any)[0].(map[string]any)["id"].(string)
 	return r

@@ -88,7 +88,7 @@ func (o Operation) Statuses() []int {
 	return out
 }
 
-// Field is a property of a request body: its type, and what narrows it.
+// Field is a property of a request body or a query parameter: its type, and what narrows it.
 type Field struct {
 	Name, Type, Format string
 	Enum               []any
@@ -100,23 +100,41 @@ func (o Operation) Fields() []Field {
 		return nil
 	}
 	out := map[string]Field{}
-	var gather func(ref *openapi3.SchemaRef)
+	var gather func(*openapi3.SchemaRef)
 	gather = func(ref *openapi3.SchemaRef) {
 		for _, part := range ref.Value.AllOf {
 			gather(part)
 		}
 		for name, p := range ref.Value.Properties {
-			f := Field{Name: name, Format: p.Value.Format, Enum: p.Value.Enum}
-			if p.Value.Type != nil && len(*p.Value.Type) > 0 {
-				f.Type = (*p.Value.Type)[0]
-			}
-			out[name] = f
+			out[name] = fieldOf(name, p)
 		}
 	}
 	for _, m := range o.op.RequestBody.Value.Content {
 		gather(m.Schema)
 	}
 	return slices.SortedFunc(maps.Values(out), func(a, b Field) int { return strings.Compare(a.Name, b.Name) })
+}
+
+// Query returns the query parameters that the operation reads, in the order of their names.
+func (o Operation) Query() []Field {
+	var out []Field
+	for _, list := range []openapi3.Parameters{o.item.Parameters, o.op.Parameters} {
+		for _, p := range list {
+			if p.Value.In == openapi3.ParameterInQuery {
+				out = append(out, fieldOf(p.Value.Name, p.Value.Schema))
+			}
+		}
+	}
+	slices.SortFunc(out, func(a, b Field) int { return strings.Compare(a.Name, b.Name) })
+	return out
+}
+
+func fieldOf(name string, ref *openapi3.SchemaRef) Field {
+	f := Field{Name: name, Format: ref.Value.Format, Enum: ref.Value.Enum}
+	if ref.Value.Type != nil && len(*ref.Value.Type) > 0 {
+		f.Type = (*ref.Value.Type)[0]
+	}
+	return f
 }
 
 // BodyMedia returns the media types of the body that the operation reads, in the order of their names.
