@@ -105,8 +105,11 @@ func word(f apitest.Field) string {
 	if len(f.Enum) > 0 {
 		return fmt.Sprint(f.Enum[len(f.Enum)-1])
 	}
-	if f.Format == "date" {
+	switch {
+	case f.Format == "date":
 		return "2001-01-01"
+	case f.Type == "integer":
+		return "987654321"
 	}
 	return "nowhere"
 }
