@@ -94,11 +94,13 @@ func shared[T any, P sharedRecord[T]](one, path string, t *domain.Table[T], edit
 
 // estateSummary is how all the buildings somebody may read stand.
 type estateSummary struct {
-	Buildings []review.Summary `json:"buildings"`
-	Findings  map[string]int   `json:"findings"`
-	Questions int              `json:"questions"`
-	Coverage  review.Coverage  `json:"coverage"`
-	Pending   bool             `json:"pending"`
+	Buildings  []review.Summary `json:"buildings"`
+	Luminaires int              `json:"luminaires"`
+	Findings   map[string]int   `json:"findings"`
+	Questions  int              `json:"questions"`
+	Coverage   review.Coverage  `json:"coverage"`
+	Pending    bool             `json:"pending"`
+	Reviews    int              `json:"reviews_pending"`
 }
 
 func (s *Server) getSummary(c *call) (reply, error) {
@@ -114,6 +116,8 @@ func (s *Server) getSummary(c *call) (reply, error) {
 		for severity, n := range b.Findings {
 			out.Findings[severity] += n
 		}
+		out.Luminaires += b.Luminaires
+		out.Reviews += b.Reviews
 		out.Questions += b.Questions
 		out.Coverage.Places += b.Coverage.Places
 		out.Coverage.Known += b.Coverage.Known

@@ -9,6 +9,7 @@ import (
 	"lampward/api/apitest"
 	"lampward/calc/loading"
 	"lampward/domain"
+	"lampward/domain/access"
 	"lampward/domain/domaintest"
 	"lampward/domain/review"
 	"lampward/domain/site"
@@ -70,6 +71,10 @@ func TestBuildings(t *testing.T) {
 	all := admin.Get("/v1/summary").Want(200).Object()
 	if len(all["buildings"].([]any)) < 2 || all["pending"] != true {
 		t.Errorf("summary %v", all)
+	}
+	own := y.Get("/v1/summary").Want(200).Object()
+	if own["luminaires"] != 1.0 || own["reviews_pending"].(float64) < 1 || own["coverage"].(map[string]any)["places"] != 1.0 {
+		t.Errorf("one luminaire and the reviews of the yard's models: %v", own)
 	}
 	if own := y.Get("/v1/summary").Want(200).Object()["buildings"].([]any); len(own) != 1 {
 		t.Errorf("the planner's summary has %d buildings", len(own))
@@ -305,4 +310,56 @@ func TestHolders(t *testing.T) {
 	}
 	admin.Post("/v1/keys/01999999-9999-7999-8999-999999999999/withdraw", nil).Want(404)
 	admin.Post("/v1/grants/01999999-9999-7999-8999-999999999999/withdraw", nil).Want(404)
+}
+
+// TestKeysOverHTTP holds that a key made over the interface opens what it was granted, and nothing ten seconds after it was
+// withdrawn.
+func TestKeysOverHTTP(t *testing.T) {
+	t.Parallel()
+	at := now
+	clock := func() time.Time { return at }
+	y := newYard(t, func(o *Options) { o.Clock, o.Authenticator = clock, NewKeys(o.Pool, clock, o.Log) })
+	var first string
+	err := domain.In(t.Context(), y.pool, domain.ID{}, domaintest.Tester, now, func(s domain.Scope) (err error) {
+		first, err = access.CreateKey(t.Context(), s, &access.Key{Name: "first administrator"}, []access.Grant{{Role: access.Administrator}})
+		return err
+	})
+	if err != nil {
+		t.Fatal(err)
+	}
+	admin := y.As(first)
+	made := admin.Post("/v1/keys", map[string]any{"name": "board reader", "grants": []any{map[string]any{"role": "integrator", "building_id": buildingA.String()}}}).Want(201)
+	reader := y.As(made.Object()["secret"].(string))
+	reader.Get(atA).Want(200)
+	reader.Get("/v1/buildings/" + buildingB.String()).Want(404)
+	reader.Get("/v1/keys").Want(403)
+	key := made.Header.Get("Location")
+	if admin.Get(key).Want(200).Object()["last_used_at"] == nil {
+		t.Error("the use of the key is not noted")
+	}
+	admin.Post(key+"/withdraw", nil).Want(200)
+	at = now.Add(keepHolder)
+	reader.Get(atA).Want(401)
+	admin.Get(key).Want(200)
+
+	// What cannot hold is told at once, with its field; nothing is made.
+	bad := map[string]any{"name": "x", "person_id": "01999999-9999-7999-8999-999999999999", "grants": []any{}}
+	if got := strings.Join(admin.Post("/v1/keys", bad).Want(422).Pointers(), " "); got != "/person_id" {
+		t.Errorf("a key of nobody is refused at %s", got)
+	}
+	person := admin.Post("/v1/persons", map[string]any{"name": "An invented person"}).Want(201)
+	admin.Post(person.Header.Get("Location")+"/retire", nil).Want(200)
+	bad["person_id"] = person.Object()["id"]
+	if got := strings.Join(admin.Post("/v1/keys", bad).Want(422).Pointers(), " "); got != "/person_id" {
+		t.Errorf("a key of somebody retired is refused at %s", got)
+	}
+	for pointer, grant := range map[string]map[string]any{
+		"/person_id":  {"role": "crew", "person_id": person.Object()["id"]},
+		"/api_key_id": {"role": "crew", "api_key_id": made.Object()["key"].(map[string]any)["id"]},
+		"/until":      {"role": "crew", "api_key_id": admin.Get("/v1/keys").Want(200).Object()["items"].([]any)[0].(map[string]any)["id"], "until": "2026-01-01T00:00:00Z"},
+	} {
+		if got := strings.Join(admin.Post("/v1/grants", grant).Want(422).Pointers(), " "); got != pointer {
+			t.Errorf("the grant %v is refused at %s, want %s", grant, got, pointer)
+		}
+	}
 }

@@ -82,8 +82,8 @@ func (c *Client) Do(method, target string, body any, headers ...string) *Answer 
 		if c.key != "" {
 			r.Header.Set("Authorization", "Bearer "+c.key)
 		}
-		if o, _ := c.contract.find(method, r.URL.Path); o != nil && body != nil && o.bodyMedia() != "" {
-			r.Header.Set("Content-Type", o.bodyMedia())
+		if o, _ := c.contract.find(method, r.URL.Path); o != nil && body != nil && len(o.BodyMedia()) > 0 {
+			r.Header.Set("Content-Type", o.BodyMedia()[0])
 		}
 		for _, h := range headers {
 			name, value, ok := strings.Cut(h, ":")

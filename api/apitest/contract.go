@@ -11,6 +11,7 @@ import (
 	"flag"
 	"fmt"
 	"io"
+	"maps"
 	"net/http"
 	"os"
 	"regexp"
@@ -87,20 +88,61 @@ func (o Operation) Statuses() []int {
 	return out
 }
 
-// bodyMedia is the first media type of the request body in the order of names, empty where there is no body.
-func (o Operation) bodyMedia() string {
+// Field is a property of a request body or a query parameter: its type, and what narrows it.
+type Field struct {
+	Name, Type, Format string
+	Enum               []any
+}
+
+// Fields returns the properties of the body that the operation reads, in the order of their names.
+func (o Operation) Fields() []Field {
 	if o.op.RequestBody == nil {
-		return ""
+		return nil
 	}
-	var media []string
-	for m := range o.op.RequestBody.Value.Content {
-		media = append(media, m)
+	out := map[string]Field{}
+	var gather func(*openapi3.SchemaRef)
+	gather = func(ref *openapi3.SchemaRef) {
+		for _, part := range ref.Value.AllOf {
+			gather(part)
+		}
+		for name, p := range ref.Value.Properties {
+			out[name] = fieldOf(name, p)
+		}
 	}
-	slices.Sort(media)
-	if len(media) == 0 {
-		return ""
+	for _, m := range o.op.RequestBody.Value.Content {
+		gather(m.Schema)
 	}
-	return media[0]
+	return slices.SortedFunc(maps.Values(out), func(a, b Field) int { return strings.Compare(a.Name, b.Name) })
+}
+
+// Query returns the query parameters that the operation reads, in the order of their names.
+func (o Operation) Query() []Field {
+	var out []Field
+	for _, list := range []openapi3.Parameters{o.item.Parameters, o.op.Parameters} {
+		for _, p := range list {
+			if p.Value.In == openapi3.ParameterInQuery {
+				out = append(out, fieldOf(p.Value.Name, p.Value.Schema))
+			}
+		}
+	}
+	slices.SortFunc(out, func(a, b Field) int { return strings.Compare(a.Name, b.Name) })
+	return out
+}
+
+func fieldOf(name string, ref *openapi3.SchemaRef) Field {
+	f := Field{Name: name, Format: ref.Value.Format, Enum: ref.Value.Enum}
+	if ref.Value.Type != nil && len(*ref.Value.Type) > 0 {
+		f.Type = (*ref.Value.Type)[0]
+	}
+	return f
+}
+
+// BodyMedia returns the media types of the body that the operation reads, in the order of their names.
+func (o Operation) BodyMedia() []string {
+	if o.op.RequestBody == nil {
+		return nil
+	}
+	return slices.Sorted(maps.Keys(o.op.RequestBody.Value.Content))
 }
 
 var braces = regexp.MustCompile(`\{([a-z_]+)\}`)

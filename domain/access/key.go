@@ -107,6 +107,11 @@ func CreateKey(ctx context.Context, s domain.Scope, k *Key, grants []Grant) (sec
 	if err := k.Validate(s.At); err != nil {
 		return "", err
 	}
+	if k.PersonID != nil {
+		if err := inUse(ctx, s, "key", "person", "person_id", *k.PersonID); err != nil {
+			return "", err
+		}
+	}
 	secret = NewSecret()
 	k.Hash = hash(secret)
 	begin(&k.CatalogueRow, s)
@@ -130,18 +135,36 @@ func begin(h *domain.CatalogueRow, s domain.Scope) {
 	h.Version, h.CreatedAt, h.UpdatedAt, h.RetiredAt = 1, s.At, s.At, nil
 }
 
-// CreateGrant stores a new grant.
+// inUse fails with Invalid where the record that a field of what names is not there or has ended.
+func inUse(ctx context.Context, s domain.Scope, what, table, field string, id domain.ID) error {
+	var there bool
+	if err := s.QueryRow(ctx, `SELECT EXISTS (SELECT FROM `+table+` WHERE id = $1 AND retired_at IS NULL)`, id).Scan(&there); err != nil {
+		return domain.Classify(err, what)
+	}
+	if !there {
+		return &domain.Error{Kind: domain.Invalid, Msg: "the " + what + " is not valid",
+			Fields: []domain.Field{{Pointer: "/" + field, Detail: "names nothing that is in use"}}}
+	}
+	return nil
+}
+
+// CreateGrant stores a new grant to a person or a key in use. It fails with Invalid where its end lies behind.
 func CreateGrant(ctx context.Context, s domain.Scope, g *Grant) error {
 	if err := g.Validate(); err != nil {
 		return err
 	}
-	if g.BuildingID != nil {
-		var there bool
-		if err := s.QueryRow(ctx, `SELECT EXISTS (SELECT FROM building WHERE id = $1)`, *g.BuildingID).Scan(&there); err != nil {
-			return domain.Classify(err, "grant")
+	if g.Until != nil && !g.Until.After(s.At) {
+		return &domain.Error{Kind: domain.Invalid, Msg: "the grant is not valid", Fields: []domain.Field{{Pointer: "/until", Detail: "must lie ahead"}}}
+	}
+	for _, n := range []struct {
+		table, field string
+		id           *domain.ID
+	}{{"person", "person_id", g.PersonID}, {"api_key", "api_key_id", g.KeyID}, {"building", "building_id", g.BuildingID}} {
+		if n.id == nil {
+			continue
 		}
-		if !there {
-			return &domain.Error{Kind: domain.Invalid, Msg: "there is no such building", Fields: []domain.Field{{Pointer: "/building_id", Detail: "names no building"}}}
+		if err := inUse(ctx, s, "grant", n.table, n.field, *n.id); err != nil {
+			return err
 		}
 	}
 	begin(&g.CatalogueRow, s)

@@ -42,10 +42,12 @@ type Summary struct {
 	BuildingID domain.ID      `json:"building_id"`
 	Code       string         `json:"code"`
 	Name       string         `json:"name"`
-	Findings   map[string]int `json:"findings"` // open, by severity
+	Luminaires int            `json:"luminaires"` // in use, as last reviewed
+	Findings   map[string]int `json:"findings"`   // open, by severity
 	Questions  int            `json:"questions"`
 	Coverage   Coverage       `json:"coverage"`
 	Pending    bool           `json:"pending"` // a review is owed: the figures may be of before a change
+	Reviews    int            `json:"reviews_pending"`
 }
 
 // Summaries returns the state of every building in use, of those named where buildings is not nil, in the order of
@@ -61,7 +63,7 @@ func Summaries(ctx context.Context, db domain.Queryer, buildings []domain.ID) ([
 		         WHERE f.building_id = b.id AND f.cleared_at IS NULL GROUP BY severity) AS x),
 		       (SELECT count(*) FROM (SELECT DISTINCT field, about_kind, about_id, with_id FROM question q WHERE q.building_id = b.id) AS x),
 		       coalesce(t.places, 0), coalesce(t.known, 0),
-		       EXISTS (SELECT FROM review_due d WHERE d.building_id IS NULL OR d.building_id = b.id)
+		       (SELECT count(*) FROM review_due d WHERE d.building_id IS NULL OR d.building_id = b.id)
 		  FROM building b
 		  LEFT JOIN (SELECT building_id, sum(places) AS places, sum(known) AS known FROM tree GROUP BY building_id) AS t ON t.building_id = b.id
 		 WHERE b.retired_at IS NULL AND ($1::uuid[] IS NULL OR b.id = ANY($1))
@@ -73,9 +75,10 @@ func Summaries(ctx context.Context, db domain.Queryer, buildings []domain.ID) ([
 	out := []Summary{}
 	for rows.Next() {
 		var s Summary
-		if err := rows.Scan(&s.BuildingID, &s.Code, &s.Name, &s.Findings, &s.Questions, &s.Coverage.Places, &s.Coverage.Known, &s.Pending); err != nil {
+		if err := rows.Scan(&s.BuildingID, &s.Code, &s.Name, &s.Findings, &s.Questions, &s.Coverage.Places, &s.Coverage.Known, &s.Reviews); err != nil {
 			return nil, domain.Classify(err, "building")
 		}
+		s.Luminaires, s.Pending = s.Coverage.Places, s.Reviews > 0
 		if s.Coverage.Places > 0 {
 			r := float64(s.Coverage.Known) / float64(s.Coverage.Places)
 			s.Coverage.Ratio = &r
