@@ -40,10 +40,11 @@ func newStreet(t *testing.T) *street {
 	idOf := func(path string, body map[string]any) string {
 		return y.Post(path, body).Want(201).Object()["id"].(string)
 	}
+	idOf("/v1/hues", map[string]any{"name": "amber"})
 	person := idOf("/v1/persons", map[string]any{"name": "An invented person"})
 	m := y.models
 	st.shared = map[string]string{
-		"lamp_model_id": m.Halogen35.ID.String(), "driver_model_id": m.Electronic105.ID.String(), "dimmer_model_id": m.LeadingEdge.ID.String(),
+		"lamp_model_id": m.LED7.ID.String(), "driver_model_id": m.Electronic105.ID.String(), "dimmer_model_id": m.LeadingEdge.ID.String(),
 		"fixture_model_id": m.Downlight.ID.String(), "person_id": person,
 		"space_use_id": idOf("/v1/space_uses", map[string]any{"use": "reading room"}),
 		"pairing_id":   idOf("/v1/pairings", map[string]any{"lamp_model_id": m.LED7.ID.String(), "driver_model_id": m.Electronic60.ID.String(), "stated_by": "an invented list"}),
@@ -80,7 +81,7 @@ func (s *street) furnish(t *testing.T, at, n string) map[string]string {
 	make("failure_id", "/failures", map[string]any{"place_id": r["place_id"], "part": "lamp", "holder": 1, "mode": "flicker", "noticed_at": "2026-02-20T09:00:00Z"})
 	make("emergency_test_id", "/emergency_tests", map[string]any{"place_id": r["place_id"], "test": "function", "tested_at": "2026-02-20T09:00:00Z", "passed": true})
 	make("trip_id", "/trips", map[string]any{"circuit_id": r["circuit_id"], "tripped_at": "2026-02-20T09:00:00Z"})
-	make("beacon_id", "/beacons", map[string]any{"tag": "B" + n})
+	make("beacon_id", "/beacons", map[string]any{"tag": "B" + n, "lit": true, "seen_at": "2026-02-01T00:00:00Z"})
 	r["finding_id"] = s.Get(at + "/findings?waived=false").Want(200).Object()["items"].([]any)[0].(map[string]any)["id"].(string)
 	waived := post("/waivers", map[string]any{"finding_ids": []any{r["finding_id"]}, "why": "to be replaced", "until": "2026-06-30"})
 	r["waiver_id"] = waived["items"].([]any)[0].(map[string]any)["id"].(string)
