@@ -2,6 +2,8 @@ package api
 
 import (
 	"context"
+	"crypto/sha256"
+	"encoding/json"
 	"strings"
 	"testing"
 	"time"
@@ -268,6 +270,18 @@ func TestHolders(t *testing.T) {
 	if again := admin.Post("/v1/keys", asked, "Idempotency-Key: one").Want(201); string(again.Body) != string(made.Body) {
 		t.Error("a repeat makes another key")
 	}
+	// What is kept for the repeat is no use to who reads the database.
+	body, err := json.Marshal(asked)
+	if err != nil {
+		t.Fatal(err)
+	}
+	sum := sha256.Sum256(append([]byte("/v1/keys\x00"), body...))
+	kept, err := access.Recall(t.Context(), domain.On(y.pool, domain.ID{}, domaintest.Tester, now),
+		access.Retry{Principal: testKeys["all"].String(), Route: "createKey", Key: "one", Hash: sum[:]})
+	if err != nil || kept == nil || strings.Contains(string(kept.Body), secret) || strings.Contains(string(kept.Body), "lwk_") {
+		t.Errorf("kept as %v (%v)", kept, err)
+	}
+	y.As("all again").Post("/v1/keys", asked, "Idempotency-Key: one").Want(409) // the same holder under another credential
 	admin.Post("/v1/keys", asked, "Idempotency-Key: two words").Want(400)
 	admin.Post("/v1/keys", map[string]any{"name": "nothing", "grants": []any{}}).Want(422)
 	key := made.Header.Get("Location")
