@@ -4,6 +4,7 @@ import (
 	"context"
 	"crypto/sha256"
 	"encoding/json"
+	"net/url"
 	"strings"
 	"testing"
 	"time"
@@ -165,6 +166,14 @@ func TestModels(t *testing.T) {
 		y.Get(box + "/uses?limit=%zz").Want(400)
 		if got := y.Get(box + "/uses").Want(200).Object()["items"].([]any); len(got) != 0 {
 			t.Errorf("%s is used by %v", one, got)
+		}
+	}
+
+	// What is printed on the box finds the model, under whichever of its codes.
+	for code, want := range map[string]int{"X1": 1, "X-1": 3 /* Exercise made three of them */, "X-": 0, "x1": 0, "BOX-1": 1, "' OR true --": 0} {
+		got := y.Get("/v1/lamp_models?known_as=" + url.QueryEscape(code)).Want(200).Object()["items"].([]any)
+		if len(got) != want {
+			t.Errorf("known as %s: %v, want %d", code, got, want)
 		}
 	}
 
