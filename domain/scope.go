@@ -68,6 +68,17 @@ func In(ctx context.Context, db *pgxpool.Pool, building ID, by Actor, at time.Ti
 	return Classify(err, "record")
 }
 
+// Within runs f on another building in s's transaction. What f records is written to that building's chain when f ends;
+// what s records, at the end of the transaction.
+func Within(ctx context.Context, s Scope, building ID, f func(Scope) error) error {
+	inner := s
+	inner.Building, inner.end = building, &ending{kept: map[any]any{}}
+	if err := f(inner); err != nil {
+		return err
+	}
+	return inner.finish(ctx)
+}
+
 // Writable reports whether s belongs to a transaction opened by In.
 func (s Scope) Writable() bool { return s.end != nil }
 

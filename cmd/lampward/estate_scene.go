@@ -16,7 +16,6 @@ type sketch struct {
 	bulk   plant.Bulk
 	events []func(*telling) error // told after the records are stored, each as its own change
 	space  domain.ID              // where places are put now
-	hours  float64
 	ways   int
 	tags   map[string]int
 	lit    int // luminaires so far
