@@ -71,6 +71,19 @@ func TestBuildings(t *testing.T) {
 	y.post(t, "/fixtures", map[string]any{"tag": "L1"})
 	y.Post(atA+"/retire", nil).Want(409)
 
+	// Nothing is put into one that is out of use, nor is it changed.
+	gone := admin.Post("/v1/buildings", map[string]any{"code": "B7", "name": "Invented shed", "time_zone": "Europe/Vienna"}).Want(201).Header.Get("Location")
+	admin.Post(gone+"/retire", nil).Want(200)
+	admin.Post(gone+"/fixtures", map[string]any{"tag": "L1"}).Want(409)
+	admin.Patch(gone, `{"name":"Invented barn"}`, "If-Match: *").Want(409)
+	admin.Post(gone+"/restore", nil).Want(200)
+	admin.Post(gone+"/fixtures", map[string]any{"tag": "L1"}).Want(201)
+
+	fourth := map[string]any{"id": "0191b3b5-cbcd-4d59-9a8a-7fb6e2d2a5a9", "code": "B8", "name": "x", "time_zone": "UTC"}
+	if got := strings.Join(admin.Post("/v1/buildings", fourth).Want(422).Pointers(), " "); got != "/id" {
+		t.Errorf("an identifier of another version is refused at %s", got)
+	}
+
 	all := admin.Get("/v1/summary").Want(200).Object()
 	if len(all["buildings"].([]any)) < 2 || all["pending"] != true {
 		t.Errorf("summary %v", all)
