@@ -2,6 +2,9 @@ package api
 
 import (
 	"context"
+	"crypto/sha256"
+	"encoding/json"
+	"net/url"
 	"strings"
 	"testing"
 	"time"
@@ -67,6 +70,19 @@ func TestBuildings(t *testing.T) {
 	// A building with places in it stays.
 	y.post(t, "/fixtures", map[string]any{"tag": "L1"})
 	y.Post(atA+"/retire", nil).Want(409)
+
+	// Nothing is put into one that is out of use, nor is it changed.
+	gone := admin.Post("/v1/buildings", map[string]any{"code": "B7", "name": "Invented shed", "time_zone": "Europe/Vienna"}).Want(201).Header.Get("Location")
+	admin.Post(gone+"/retire", nil).Want(200)
+	admin.Post(gone+"/fixtures", map[string]any{"tag": "L1"}).Want(409)
+	admin.Patch(gone, `{"name":"Invented barn"}`, "If-Match: *").Want(409)
+	admin.Post(gone+"/restore", nil).Want(200)
+	admin.Post(gone+"/fixtures", map[string]any{"tag": "L1"}).Want(201)
+
+	fourth := map[string]any{"id": "0191b3b5-cbcd-4d59-9a8a-7fb6e2d2a5a9", "code": "B8", "name": "x", "time_zone": "UTC"}
+	if got := strings.Join(admin.Post("/v1/buildings", fourth).Want(422).Pointers(), " "); got != "/id" {
+		t.Errorf("an identifier of another version is refused at %s", got)
+	}
 
 	all := admin.Get("/v1/summary").Want(200).Object()
 	if len(all["buildings"].([]any)) < 2 || all["pending"] != true {
@@ -163,6 +179,14 @@ func TestModels(t *testing.T) {
 		y.Get(box + "/uses?limit=%zz").Want(400)
 		if got := y.Get(box + "/uses").Want(200).Object()["items"].([]any); len(got) != 0 {
 			t.Errorf("%s is used by %v", one, got)
+		}
+	}
+
+	// What is printed on the box finds the model, under whichever of its codes.
+	for code, want := range map[string]int{"X1": 1, "X-1": 3 /* Exercise made three of them */, "X-": 0, "x1": 0, "BOX-1": 1, "' OR true --": 0} {
+		got := y.Get("/v1/lamp_models?known_as=" + url.QueryEscape(code)).Want(200).Object()["items"].([]any)
+		if len(got) != want {
+			t.Errorf("known as %s: %v, want %d", code, got, want)
 		}
 	}
 
@@ -268,6 +292,18 @@ func TestHolders(t *testing.T) {
 	if again := admin.Post("/v1/keys", asked, "Idempotency-Key: one").Want(201); string(again.Body) != string(made.Body) {
 		t.Error("a repeat makes another key")
 	}
+	// What is kept for the repeat is no use to who reads the database.
+	body, err := json.Marshal(asked)
+	if err != nil {
+		t.Fatal(err)
+	}
+	sum := sha256.Sum256(append([]byte("/v1/keys\x00"), body...))
+	kept, err := access.Recall(t.Context(), domain.On(y.pool, domain.ID{}, domaintest.Tester, now),
+		access.Retry{Principal: testKeys["all"].String(), Route: "createKey", Key: "one", Hash: sum[:]})
+	if err != nil || kept == nil || strings.Contains(string(kept.Body), secret) || strings.Contains(string(kept.Body), "lwk_") {
+		t.Errorf("kept as %v (%v)", kept, err)
+	}
+	y.As("all again").Post("/v1/keys", asked, "Idempotency-Key: one").Want(409) // the same holder under another credential
 	admin.Post("/v1/keys", asked, "Idempotency-Key: two words").Want(400)
 	admin.Post("/v1/keys", map[string]any{"name": "nothing", "grants": []any{}}).Want(422)
 	key := made.Header.Get("Location")

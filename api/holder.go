@@ -35,7 +35,7 @@ func (s *Server) holders() []route {
 	out := append(persons.routes(), keys.routes()...)
 	out = append(out, grants.routes()...)
 	return append(out,
-		route{Method: http.MethodPost, Path: "/v1/keys", Op: "createKey", Right: administer, Scope: estate, Takes: []string{jsonMedia}, Handle: s.createKey},
+		route{Method: http.MethodPost, Path: "/v1/keys", Op: "createKey", Right: administer, Scope: estate, Takes: []string{jsonMedia}, Secret: true, Handle: s.createKey},
 		route{Method: http.MethodPost, Path: "/v1/keys/{key_id}/withdraw", Op: "withdrawKey", Right: administer, Scope: estate,
 			Handle: func(c *call) (reply, error) {
 				return withdraw(c, keys, func(s domain.Scope, id domain.ID, version int64) (access.Key, error) {

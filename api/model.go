@@ -32,7 +32,8 @@ type model[T any] interface {
 func models[T any, P model[T]](s *Server, one, kind string, t *domain.Table[T], filters ...filter) []route {
 	r := shared[T, P](one, "/v1/"+one+"s", t, plan)
 	r.Make = report
-	r.Filters = append([]filter{{Name: "code"}, {Name: "name", Op: "contains"}, {Name: "provisional", Kind: boolFilter}}, filters...)
+	r.Filters = append([]filter{{Name: "code"}, {Name: "known_as", Column: "also_known_as", Op: "named"}, {Name: "name", Op: "contains"},
+		{Name: "provisional", Kind: boolFilter}}, filters...)
 	store := r.Create
 	r.Create = func(c *call, sc domain.Scope, row *T) error {
 		h := P(row).Head()

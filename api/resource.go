@@ -308,6 +308,9 @@ func (c *call) settle(h, was head) error {
 		retired *time.Time
 	}
 	if was.id == nil { // a new row; its id is the client's to choose
+		if id := *h.id; !id.IsZero() && (id[6]>>4 != 7 || id[8]>>6 != 2) {
+			bad = append(bad, domain.Field{Pointer: "/id", Detail: "must be a UUIDv7 (RFC 9562), or be left out"})
+		}
 		was = head{id: h.id, version: &zero.version, createdAt: &zero.at, updated: &zero.at, retiredAt: &zero.retired}
 	}
 	if *h.id != *was.id && !h.id.IsZero() {

@@ -1,6 +1,9 @@
 package api
 
 import (
+	"crypto/aes"
+	"crypto/cipher"
+	"crypto/hkdf"
 	"crypto/sha256"
 	"net/http"
 	"strings"
@@ -26,6 +29,11 @@ func (c *call) write(building domain.ID, f func(domain.Scope) (reply, error)) (r
 				return err
 			}
 			if a != nil {
+				if c.route.Secret {
+					if a.Body, err = c.unseal(a.Body); err != nil {
+						return err
+					}
+				}
 				out = recalled(a)
 				return nil
 			}
@@ -38,7 +46,13 @@ func (c *call) write(building domain.ID, f func(domain.Scope) (reply, error)) (r
 			return err
 		}
 		if retry != nil {
-			if err := access.Remember(c.ctx, s, *retry, r.kept()); err != nil {
+			a := r.kept()
+			if c.route.Secret {
+				if a.Body, err = c.seal(a.Body); err != nil {
+					return err
+				}
+			}
+			if err := access.Remember(c.ctx, s, *retry, a); err != nil {
 				return err
 			}
 		}
@@ -49,6 +63,46 @@ func (c *call) write(building domain.ID, f func(domain.Scope) (reply, error)) (r
 		return reply{}, err
 	}
 	return out, nil
+}
+
+// seal encrypts an answer that holds a secret with a key made of the caller's own credentials, which the database does
+// not hold: who reads the database, or a backup of it, learns no key.
+func (c *call) seal(body []byte) ([]byte, error) {
+	lock, err := c.lock()
+	if err != nil {
+		return nil, err
+	}
+	return lock.Seal(nil, nil, body, []byte(c.route.Op)), nil
+}
+
+// unseal opens what seal closed. It fails with Conflict where other credentials closed it.
+func (c *call) unseal(sealed []byte) ([]byte, error) {
+	lock, err := c.lock()
+	if err != nil {
+		return nil, err
+	}
+	body, err := lock.Open(nil, nil, sealed, []byte(c.route.Op))
+	if err != nil {
+		return nil, &domain.Error{Kind: domain.Conflict, Msg: "this was done before under other credentials, and its secret is shown to those alone", Err: err}
+	}
+	return body, nil
+}
+
+// lock is AES-256-GCM with random nonces under a key derived from the credentials (RFC 5869).
+func (c *call) lock() (cipher.AEAD, error) {
+	bearer, err := credentials(c.r)
+	if err != nil {
+		return nil, err
+	}
+	key, err := hkdf.Key(sha256.New, []byte(bearer), nil, "kept answer", 32)
+	if err != nil {
+		return nil, err
+	}
+	block, err := aes.NewCipher(key)
+	if err != nil {
+		return nil, err
+	}
+	return cipher.NewGCMWithRandomNonce(block)
 }
 
 // retry returns what makes a repeat of this request the same request, nil without an Idempotency-Key

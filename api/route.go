@@ -20,6 +20,7 @@ type route struct {
 	Match   bool          // If-Match is needed
 	Body    int64         // largest body in bytes, decompressed; Limits.Body where 0
 	Timeout time.Duration // Limits.Timeout where 0, none where negative
+	Secret  bool          // the answer holds a secret: for a repeat it is kept sealed, and only who asked can open it
 
 	body int64
 	meter

@@ -177,6 +177,7 @@ var (
 				Grants: Grants{On: map[domain.ID][]Grant{buildingA: {{Role: r}}}}}
 		}
 		k["all"] = &Principal{Actor: domain.Actor{Kind: "api_key", ID: domain.ID{15: 100}}, Grants: Grants{All: []Grant{{Role: Administrator}}}}
+		k["all again"] = k["all"]
 		k["watcher"] = &Principal{Actor: domain.Actor{Kind: "api_key", ID: domain.ID{15: 103}}, Grants: Grants{All: []Grant{{Role: Viewer}}}}
 		k["nobody"] = &Principal{Actor: domain.Actor{Kind: "api_key", ID: domain.ID{15: 101}}}
 		k["ended"] = &Principal{Actor: domain.Actor{Kind: "api_key", ID: domain.ID{15: 102}},

@@ -8,7 +8,8 @@ import (
 )
 
 // A Match narrows a list to rows whose column equals Value, or is absent where Value is nil. Op "contains" matches
-// text that holds Value in any case; "from" and "until" compare; "in" takes a list of identifiers.
+// text that holds Value in any case; "from" and "until" compare; "in" takes a list of identifiers; "named"
+// is for a column of other codes: Value is the code or one of those.
 type Match struct {
 	Column string
 	Op     string // empty: equals
@@ -37,6 +38,8 @@ func (t *Table[T]) Where(from int, matches []Match) (string, []any, error) {
 			parts = append(parts, fmt.Sprintf("(%s IS NULL) = $%d", m.Column, n))
 		case m.Op == "in":
 			parts = append(parts, fmt.Sprintf("%s = ANY($%d)", m.Column, n))
+		case m.Op == "named":
+			parts = append(parts, fmt.Sprintf("(code = $%d OR $%d = ANY(%s))", n, n, m.Column))
 		case m.Op == "from":
 			parts = append(parts, fmt.Sprintf("%s >= $%d", m.Column, n))
 		case m.Op == "until":

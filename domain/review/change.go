@@ -38,7 +38,7 @@ const tries = 8
 
 // Change runs f on the trees that touch names and all it turns out to reach, then judges them anew and stores what is
 // found, in s's transaction: all or nothing. It fails with Invalid where the records would break a rule that always
-// holds, and with Conflict where others keep changing the same trees.
+// holds, and with Conflict where others keep changing the same trees or the building is retired.
 func (r *Reviewer) Change(ctx context.Context, s domain.Scope, touch Touch, f func(*plant.Edit) error) (Outcome, error) {
 	trees, err := touched(ctx, s, touch)
 	if err != nil {
@@ -101,9 +101,18 @@ func (r *Reviewer) attempt(ctx context.Context, s domain.Scope, cat *plant.Catal
 	if err := event.Hold(ctx, inner); err != nil {
 		return out, nil, false, err
 	}
-	seq, err := plant.CatalogueSeq(ctx, inner)
+	// Both are read under the lock of the head, which a job that follows the catalogue and a retiring building take too.
+	var seq int64
+	var retired bool
+	err = inner.QueryRow(ctx, `
+		SELECT seq, EXISTS (SELECT FROM building WHERE id = $1 AND retired_at IS NOT NULL)
+		  FROM catalogue_head
+		 WHERE id = 1`, inner.Building).Scan(&seq, &retired)
 	if err != nil {
-		return out, nil, false, err
+		return out, nil, false, domain.Classify(err, "catalogue")
+	}
+	if retired {
+		return out, nil, false, domain.Conflictf("the building is retired; restore it first")
 	}
 	if seq != cat.Seq {
 		return out, nil, true, back()

@@ -87,6 +87,9 @@ func UpdateBuilding(ctx context.Context, s domain.Scope, b *Building) error {
 	if err != nil {
 		return err
 	}
+	if before.RetiredAt != nil {
+		return domain.Conflictf("the building is retired; restore it first")
+	}
 	b.ID, b.CreatedAt, b.UpdatedAt = s.Building, before.CreatedAt, s.At
 	if err := Buildings.Update(ctx, s, b); err != nil {
 		return err
@@ -100,6 +103,10 @@ func UpdateBuilding(ctx context.Context, s domain.Scope, b *Building) error {
 func RetireBuilding(ctx context.Context, s domain.Scope, version int64) (Building, error) {
 	b, err := Buildings.Lock(ctx, s, s.Building)
 	if err != nil {
+		return Building{}, err
+	}
+	// Whoever is putting a place there holds the head until it is committed: then it is counted, or refused.
+	if err := event.Hold(ctx, s); err != nil {
 		return Building{}, err
 	}
 	var standing int
