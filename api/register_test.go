@@ -160,6 +160,14 @@ func TestSwaps(t *testing.T) {
 	y.Get(atA + "/units?part=wheel").Want(422)
 	y.Get(atA + "/units?part=%zz").Want(400)
 
+	// Gear without separation in the place of separated gear is told: what hangs on it was chosen for the old one.
+	open := y.As("all").Post("/v1/driver_models", map[string]any{"code": "OPEN", "name": "Gear without separation", "kind": "led_constant_voltage", "output_v": 12.0, "separation": "none"}).Want(201).Object()["id"]
+	crew.Post(atA+"/places/"+driver+"/swap", map[string]any{"part": "driver", "model_id": open, "done_at": "2026-02-22T09:00:00Z"}).Want(200)
+	if got := y.Get(atA + "/drivers/" + driver).Want(200).Object(); got["separation_before"] != "selv" || got["driver_model_id"] != open {
+		t.Errorf("after the swap the gear is %v", got)
+	}
+	crew.Post(atA+"/places/"+driver+"/swap", map[string]any{"part": "driver", "model_id": y.models.Electronic105.ID.String(), "done_at": "2026-02-23T09:00:00Z"}).Want(200)
+
 	// The tree with its loads.
 	tree := y.Get(atA + "/circuits/" + circuit + "/tree").Want(200)
 	if !strings.Contains(string(tree.Body), `"label":"G1"`) || !strings.Contains(string(tree.Body), `"max":105`) {

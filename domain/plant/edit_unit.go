@@ -246,11 +246,16 @@ func (e *Edit) carry(ctx context.Context, w Swap) error {
 			   SET battery = $3, version = version + 1, updated_at = $4
 			 WHERE building_id = $1 AND id = $2 AND kind = 'fixture'`, w.Battery, e.At)
 	case KindDriver:
+		before, err := e.separationBefore(ctx, w)
+		if err != nil {
+			return err
+		}
 		return e.set(ctx, w, `
 			UPDATE place
 			   SET driver_model_id = $3, version = version + 1, updated_at = $4,
-			       fitted_at = CASE WHEN kind = 'driver' THEN $5 ELSE fitted_at END
-			 WHERE building_id = $1 AND id = $2 AND kind IN ('driver', 'fixture')`, w.ModelID, e.At, w.DoneAt)
+			       fitted_at = CASE WHEN kind = 'driver' THEN $5 ELSE fitted_at END,
+			       separation_before = CASE WHEN kind = 'driver' AND $6 <> '' THEN $6 ELSE separation_before END
+			 WHERE building_id = $1 AND id = $2 AND kind IN ('driver', 'fixture')`, w.ModelID, e.At, w.DoneAt, before)
 	case KindDimmer:
 		return e.set(ctx, w, `
 			UPDATE place
@@ -262,6 +267,18 @@ func (e *Edit) carry(ctx context.Context, w Swap) error {
 			   SET fixture_model_id = $3, version = version + 1, updated_at = $4, fitted_at = $5
 			 WHERE building_id = $1 AND id = $2 AND kind = 'fixture'`, w.ModelID, e.At, w.DoneAt)
 	}
+}
+
+// separationBefore returns how the output of the gear that leaves was separated from the mains, empty where its model does
+// not say or is the one that comes: what hangs on it was chosen for that.
+func (e *Edit) separationBefore(ctx context.Context, w Swap) (string, error) {
+	var before string
+	err := e.QueryRow(ctx, `
+		SELECT coalesce(m.separation, '')
+		  FROM place p
+		  LEFT JOIN driver_model m ON m.id = p.driver_model_id AND p.driver_model_id IS DISTINCT FROM $3
+		 WHERE p.building_id = $1 AND p.id = $2`, e.Building, w.PlaceID, w.ModelID).Scan(&before)
+	return before, domain.Classify(err, "place")
 }
 
 // set changes one place by a statement whose first arguments are the building and the place.
