@@ -47,6 +47,6 @@ func (s *Server) table() []route {
 	t = append(t, s.holders()...)
 	t = append(t, s.register()...)
 	t = append(t, s.checks()...)
-	// files in and out
+	t = append(t, s.files()...)
 	return append(t, s.more...)
 }

@@ -224,7 +224,8 @@ func (c covering) Run() int {
 
 var register = sync.OnceFunc(func() {
 	openapi3.DefineStringFormatValidator("uuid", openapi3.NewRegexpFormatValidator(`^[0-9a-f]{8}-[0-9a-f]{4}-[0-9a-f]{4}-[0-9a-f]{4}-[0-9a-f]{12}$`))
-	for _, media := range []string{"text/html", "text/css", "text/javascript", "application/openmetrics-text", "text/csv", "image/png"} {
+	for _, media := range []string{"text/html", "text/css", "text/javascript", "application/openmetrics-text", "text/csv", "image/png",
+		"application/zip", "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet"} {
 		openapi3filter.RegisterBodyDecoder(media, plain)
 	}
 	openapi3filter.RegisterBodyDecoder("application/yaml", plain)

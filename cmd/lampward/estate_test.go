@@ -9,8 +9,6 @@ import (
 	"lampward/domain/review"
 )
 
-func TestMain(m *testing.M) { domaintest.Main(m) }
-
 // TestEstateTellsEveryStory loads the small estate: nearly every rule must find something in it (two are for proposals
 // alone or need what no invented story has), every severity must appear, and a second load must change nothing.
 func TestEstateTellsEveryStory(t *testing.T) {

@@ -43,6 +43,9 @@ type Book struct {
 // Sheets returns the names of the sheets in their order.
 func (b *Book) Sheets() []string { return b.order }
 
+// Rows returns the rows of a sheet as they were read; the caller must not change them.
+func (b *Book) Rows(sheet string) [][]string { return b.sheet(sheet) }
+
 // sheet returns the rows of a sheet by its name in any case, nil where there is none.
 func (b *Book) sheet(name string) [][]string {
 	for _, n := range b.order {

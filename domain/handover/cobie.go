@@ -25,7 +25,7 @@ const fixtureObject = "IfcLightFixtureType"
 // type is a luminaire where its category is lighting *and* it was exported as a light fixture: switches and boards carry
 // one of the two, loose medical and table lamps the other. Records are joined by names with their blanks trimmed.
 func parseCOBie(b *Book) (*Register, error) {
-	r := newRegister("cobie")
+	r := newRegister(COBieForm)
 	r.facility(b)
 	r.cobieSpaces(b)
 	types := r.cobieTypes(b)

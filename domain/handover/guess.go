@@ -139,7 +139,7 @@ func parseSheet(b *Book, m *Matching) (*Register, error) {
 	if len(rows) < m.Header {
 		return nil, errUnusable(b.Name, "it has no sheet %.60q with headers in row %d", m.Sheet, m.Header)
 	}
-	r := newRegister("sheet")
+	r := newRegister(SheetForm)
 	name := strings.TrimSuffix(strings.TrimSuffix(b.Name, ".xlsx"), ".csv")
 	r.Building = site.Building{Code: r.codeOf("building", name), Name: line(name), TimeZone: "Etc/UTC", Note: "From the sheet " + line(b.Name)}
 	r.Told = append(r.Told, "The sheet says neither time zone, mains nor wiring rules: set them on the building.")

@@ -12,7 +12,7 @@ import (
 // A Register is one building as a file tells it. Records name each other by identifiers that the register gave; models
 // are known by their codes.
 type Register struct {
-	Form     string // survey, cobie, sheet
+	Form     string // COBieForm, SurveyForm or SheetForm
 	Building site.Building
 	Lamps    []plant.LampModel
 	Drivers  []plant.DriverModel
@@ -78,13 +78,31 @@ func spaceName(level, name string) string {
 	return level + "/" + name
 }
 
+// Forms of a file.
+const (
+	COBieForm  = "cobie"
+	SurveyForm = "survey"
+	SheetForm  = "sheet" // anybody's
+)
+
+// FormOf returns the form that a book has.
+func FormOf(b *Book) string {
+	switch {
+	case b.sheet("Component") != nil && b.sheet("Type") != nil:
+		return COBieForm
+	case b.sheet(fixturesSheet) != nil && b.sheet(buildingSheet) != nil:
+		return SurveyForm
+	}
+	return SheetForm
+}
+
 // Parse turns a book into a register: a COBie hand-over workbook, our own survey workbook, or else anybody's sheet with the
 // matching given (a proposed one where nil).
 func Parse(b *Book, m *Matching) (*Register, error) {
-	switch {
-	case m == nil && b.sheet("Component") != nil && b.sheet("Type") != nil:
+	switch form := FormOf(b); {
+	case m == nil && form == COBieForm:
 		return parseCOBie(b)
-	case m == nil && b.sheet(fixturesSheet) != nil && b.sheet(buildingSheet) != nil:
+	case m == nil && form == SurveyForm:
 		return parseSurvey(b)
 	}
 	if m == nil {

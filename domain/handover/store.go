@@ -240,7 +240,7 @@ func (w *writer) records(s domain.Scope) error {
 
 // change brings a known building to what the file says of it, where the file says anything.
 func (w *writer) change(s domain.Scope) error {
-	if w.r.Form != "survey" {
+	if w.r.Form != SurveyForm {
 		return nil
 	}
 	before, err := site.GetBuilding(w.ctx, s, s.Building)
@@ -268,7 +268,7 @@ func (w *writer) known(s domain.Scope) error {
 	const inUse = `WHERE building_id = $1 AND retired_at IS NULL`
 	if err := site.Spaces.Each(w.ctx, s, func(p *site.Space) error {
 		note("space", p.ID, spaceName(p.Level, p.Name))
-		if w.r.Form == "cobie" {
+		if w.r.Form == COBieForm {
 			note("space", p.ID, p.Name)
 		}
 		return nil

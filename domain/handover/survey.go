@@ -56,7 +56,7 @@ func form(name string) *sheetForm {
 }
 
 func parseSurvey(b *Book) (*Register, error) {
-	r := newRegister("survey")
+	r := newRegister(SurveyForm)
 	buildings := rowsOf[site.Building](r, b, buildingSheet, nil)
 	if len(buildings) != 1 {
 		return nil, errUnusable(b.Name, "its sheet %s must hold one row and has %d", buildingSheet, len(buildings))
