@@ -76,15 +76,22 @@ func (c *call) inside(id domain.ID) domain.Scope {
 // keepPlace stores what was seen as a place: the models first, in the catalogue, then the place in its building. Where
 // the proposal may not be fitted, the place is kept with the lamps that stay.
 func (s *Server) keepPlace(c *call, a review.FitAnswer, q review.FitRequest) (reply, error) {
+	if out, done, err := c.answered(); done || err != nil {
+		return out, err
+	}
+	// The models come first and by themselves: inside the write they would take a second connection while it holds one,
+	// and many at once would wait for each other. Models left behind by a place that could not be stored are
+	// provisional: a planner sees and merges them.
+	var named review.FitRequest
+	err := domain.In(c.ctx, s.opt.Pool, domain.ID{}, c.principal.Actor, c.at, func(central domain.Scope) error {
+		named = q
+		return review.KeepModels(c.ctx, central, &named)
+	})
+	if err != nil {
+		return reply{}, err
+	}
 	return c.write(*q.BuildingID, func(sc domain.Scope) (reply, error) {
-		// Models left behind by a place that could not be stored are provisional: a planner sees and merges them.
-		err := domain.In(c.ctx, s.opt.Pool, domain.ID{}, c.principal.Actor, c.at, func(central domain.Scope) error {
-			return review.KeepModels(c.ctx, central, &q)
-		})
-		if err != nil {
-			return reply{}, err
-		}
-		kept, _, err := s.opt.Reviewer.Store(c.ctx, sc, &q, a.Answer == review.Fits)
+		kept, _, err := s.opt.Reviewer.Store(c.ctx, sc, &named, a.Answer == review.Fits)
 		if err != nil {
 			return reply{}, err
 		}

@@ -3,7 +3,9 @@ package api
 import (
 	"context"
 	"fmt"
+	"maps"
 	"strings"
+	"sync"
 	"testing"
 
 	"lampward/domain/review"
@@ -205,6 +207,19 @@ func TestFitCheck(t *testing.T) {
 		t.Error("a repeat kept another place")
 	}
 	crew.Post("/v1/fit-check", halogen).Want(409) // the label is taken
+	// More at once than there are connections: each is kept, none waits for another's connection.
+	var wg sync.WaitGroup
+	for n := range 12 {
+		one := map[string]any{}
+		maps.Copy(one, halogen)
+		one["keep"] = map[string]any{"tag": fmt.Sprint("AT-ONCE-", n)}
+		wg.Go(func() {
+			if a := crew.Post("/v1/fit-check", one); a.Status != 200 {
+				t.Errorf("kept at once: %d %s", a.Status, a.Body)
+			}
+		})
+	}
+	wg.Wait()
 	y.As("viewer").Post("/v1/fit-check", halogen).Want(403)
 	halogen["building_id"] = buildingB.String()
 	crew.Post("/v1/fit-check", halogen).Want(404)

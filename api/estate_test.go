@@ -4,8 +4,10 @@ import (
 	"context"
 	"crypto/sha256"
 	"encoding/json"
+	"fmt"
 	"net/url"
 	"strings"
+	"sync"
 	"testing"
 	"time"
 
@@ -97,6 +99,35 @@ func TestBuildings(t *testing.T) {
 	}
 	y.Get("/v1/summary?x=1").Want(422)
 	y.As("nobody").Get("/v1/summary").Want(403)
+}
+
+// TestRetiringWhilePlacesArrive holds that a building goes out of use empty, whoever was putting a place there meanwhile.
+func TestRetiringWhilePlacesArrive(t *testing.T) {
+	t.Parallel()
+	y := newYard(t)
+	admin := y.As("all")
+	for round := range 8 {
+		at := admin.Post("/v1/buildings", map[string]any{"code": fmt.Sprint("R", round), "name": "Invented shed", "time_zone": "Europe/Vienna"}).Want(201).Header.Get("Location")
+		var wg sync.WaitGroup
+		for range 3 {
+			wg.Go(func() {
+				if a := admin.Post(at+"/fixtures", map[string]any{}); a.Status != 201 && a.Status != 409 {
+					t.Errorf("answered %d: %s", a.Status, a.Body)
+				}
+			})
+		}
+		wg.Go(func() {
+			if a := admin.Post(at+"/retire", nil); a.Status != 200 && a.Status != 409 {
+				t.Errorf("answered %d: %s", a.Status, a.Body)
+			}
+		})
+		wg.Wait()
+		places := len(admin.Get(at + "/fixtures").Want(200).Object()["items"].([]any))
+		retired := admin.Get(at).Want(200).Object()["retired_at"] != nil
+		if retired != (places == 0) {
+			t.Errorf("%d places arrived and the building is retired: %t", places, retired)
+		}
+	}
 }
 
 func TestRates(t *testing.T) {

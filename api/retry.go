@@ -24,17 +24,12 @@ func (c *call) write(building domain.ID, f func(domain.Scope) (reply, error)) (r
 	err = domain.In(c.ctx, c.s.opt.Pool, building, c.principal.Actor, c.at, func(s domain.Scope) error {
 		out = reply{}
 		if retry != nil {
-			a, err := access.Recall(c.ctx, s, *retry)
+			a, err := c.recall(s, *retry)
 			if err != nil {
 				return err
 			}
 			if a != nil {
-				if c.route.Secret {
-					if a.Body, err = c.unseal(a.Body); err != nil {
-						return err
-					}
-				}
-				out = recalled(a)
+				out = *a
 				return nil
 			}
 		}
@@ -63,6 +58,38 @@ func (c *call) write(building domain.ID, f func(domain.Scope) (reply, error)) (r
 		return reply{}, err
 	}
 	return out, nil
+}
+
+// recall returns what the same request was answered with before, nil where it was not.
+func (c *call) recall(s domain.Scope, r access.Retry) (*reply, error) {
+	a, err := access.Recall(c.ctx, s, r)
+	if err != nil || a == nil {
+		return nil, err
+	}
+	if c.route.Secret {
+		if a.Body, err = c.unseal(a.Body); err != nil {
+			return nil, err
+		}
+	}
+	out := recalled(a)
+	return &out, nil
+}
+
+// answered is for a handler that must do something before its write: it returns what the same request was answered with
+// before, and whether it was.
+func (c *call) answered() (out reply, done bool, err error) {
+	retry, err := c.retry()
+	if err != nil || retry == nil {
+		return reply{}, false, err
+	}
+	err = domain.In(c.ctx, c.s.opt.Pool, domain.ID{}, c.principal.Actor, c.at, func(s domain.Scope) error {
+		a, err := c.recall(s, *retry)
+		if done = a != nil; done {
+			out = *a
+		}
+		return err
+	})
+	return out, done, err
 }
 
 // seal encrypts an answer that holds a secret with a key made of the caller's own credentials, which the database does
