@@ -152,6 +152,11 @@ func (r *running) checkMetrics(t *testing.T) {
 		}
 		served[name] = true
 	}
+	for _, state := range []string{"acquired", "idle", "max"} { // the alerts ask for these
+		if !strings.Contains(text, `lampward_db_pool_connections{state="`+state+`"}`) {
+			t.Errorf("no connections in the state %q", state)
+		}
+	}
 	if !maps.Equal(told, served) {
 		t.Errorf("the guide lists %v; the program serves %v", slices.Sorted(maps.Keys(told)), slices.Sorted(maps.Keys(served)))
 	}
