@@ -60,9 +60,9 @@ func (g *Gauges) Collect(ch chan<- prometheus.Metric) {
 		ch <- prometheus.MustNewConstMetric(d, prometheus.GaugeValue, v, labels...)
 	}
 	s := g.pool.Stat()
-	gauge(g.conns, float64(s.AcquiredConns()), "in_use")
+	gauge(g.conns, float64(s.AcquiredConns()), "acquired")
 	gauge(g.conns, float64(s.IdleConns()), "idle")
-	gauge(g.conns, float64(s.MaxConns()), "most")
+	gauge(g.conns, float64(s.MaxConns()), "max")
 	ctx, cancel := context.WithTimeout(context.Background(), gaugeWithin)
 	defer cancel()
 	due, rechecks, err := review.Pending(ctx, g.pool, g.clock())

@@ -3,6 +3,7 @@ package api
 import (
 	"net/http"
 	"strconv"
+	"sync"
 
 	"github.com/prometheus/client_golang/prometheus"
 )
@@ -41,14 +42,14 @@ func newMeters(reg prometheus.Registerer) *meters {
 
 // meter is what one route counts into.
 type meter struct {
-	seconds  prometheus.Observer
+	seconds  func() prometheus.Observer // made by the first request, so that what nobody asks for is not listed
 	requests *prometheus.CounterVec
 }
 
 // of returns the meter of a route; method is one of the table's or "other".
 func (m *meters) of(path, method string) meter {
 	return meter{
-		seconds:  m.seconds.WithLabelValues(path, method),
+		seconds:  sync.OnceValue(func() prometheus.Observer { return m.seconds.WithLabelValues(path, method) }),
 		requests: m.requests.MustCurryWith(prometheus.Labels{"route": path, "method": method}),
 	}
 }
@@ -63,6 +64,6 @@ func knownMethod(method string) string {
 }
 
 func (m meter) count(status int, seconds float64) {
-	m.seconds.Observe(seconds)
+	m.seconds().Observe(seconds)
 	m.requests.WithLabelValues(strconv.Itoa(status)).Inc()
 }

@@ -240,8 +240,17 @@ func (v *dimmerView) minimum(s *dimmerLoad) (least float64, ok bool, missing Fie
 	return least, ok, FieldDimmerMinLoad
 }
 
+// input says what a rule reads of the load on a control.
+type input uint8
+
+const (
+	lampPower     input = iota // the lamps' power alone
+	inputPower                 // with the losses of the gear, W
+	apparentPower              // inductive gear by its VA
+)
+
 // askLoads asks for what keeps the load on a control from being known: power first, then what turns it into input.
-func (v *dimmerView) askLoads(s *dimmerLoad, efficiency bool) {
+func (v *dimmerView) askLoads(read input) {
 	asked := false
 	for i := range v.members {
 		m := &v.members[i]
@@ -254,7 +263,7 @@ func (v *dimmerView) askLoads(s *dimmerLoad, efficiency bool) {
 			asked = v.askLampsIn(m.fixture) || asked
 		}
 	}
-	if asked || !efficiency {
+	if asked || read == lampPower {
 		return
 	}
 	for i := range v.members {
@@ -265,7 +274,7 @@ func (v *dimmerView) askLoads(s *dimmerLoad, efficiency bool) {
 		if !d.inputFactor().exact() {
 			v.ask(FieldEfficiency, aboutGear(d.g))
 		}
-		if classOfGear(d.kind) == inductive {
+		if read == apparentPower && classOfGear(d.kind) == inductive {
 			for j := range d.lamps {
 				if l := &d.lamps[j]; l.model != nil && !l.inversePowerFactor().exact() {
 					v.ask(FieldLampPowerFactor, aboutLamp(l.model))

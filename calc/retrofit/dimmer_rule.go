@@ -299,7 +299,7 @@ func dimmerOverloaded(v *dimmerView) {
 		}
 	}
 	if j.open {
-		v.askLoads(&s, true)
+		v.askLoads(apparentPower)
 	}
 	if peaked && s.peakMiss != nil {
 		v.ask(FieldLampPeak, aboutLamp(s.peakMiss))
@@ -391,7 +391,7 @@ func (v *dimmerView) channelOverloaded() {
 	}
 	j := above(amps, exactly(limit))
 	if j.open {
-		v.askLoads(&dimmerLoad{}, false)
+		v.askLoads(lampPower)
 	}
 	if j.fails {
 		f := v.found(High, j, lamps)
@@ -427,7 +427,7 @@ func (v *dimmerView) belowMinimum(s *dimmerLoad) (least float64, j judgement) {
 	}
 	j = below(s.working, exactly(least))
 	if j.open {
-		v.askLoads(s, true)
+		v.askLoads(inputPower)
 	}
 	return least, j
 }

@@ -101,7 +101,7 @@ func switchUnsuitable(v *dimmerView) {
 	case ok:
 		j := below(s.working, exactly(least))
 		if j.open {
-			v.askLoads(&s, true)
+			v.askLoads(inputPower)
 		}
 		if j.fails {
 			f := v.found(Medium, j, s.lit)
@@ -136,7 +136,7 @@ func (v *dimmerView) contactOverloaded(s *dimmerLoad) {
 	}
 	if few := below(s.ledW, exactly(loading.SwitchedPowerW)); !many && (few.fails || few.open) {
 		if few.open {
-			v.askLoads(s, false)
+			v.askLoads(lampPower)
 		}
 		return
 	}

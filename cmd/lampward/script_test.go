@@ -2,10 +2,15 @@ package main
 
 import (
 	"bufio"
+	"errors"
+	"io"
+	"maps"
 	"net/http"
 	"os"
 	"os/exec"
+	"regexp"
 	"runtime"
+	"slices"
 	"strings"
 	"testing"
 
@@ -105,6 +110,12 @@ func start(t *testing.T, dir string, args ...string) *running {
 
 func (r *running) get(t *testing.T, path string) int {
 	t.Helper()
+	status, _ := r.read(t, path)
+	return status
+}
+
+func (r *running) read(t *testing.T, path string) (status int, body string) {
+	t.Helper()
 	q, err := http.NewRequest(http.MethodGet, "http://"+r.address+path, nil)
 	if err != nil {
 		t.Fatal(err)
@@ -114,10 +125,41 @@ func (r *running) get(t *testing.T, path string) int {
 	if err != nil {
 		t.Fatal(err)
 	}
-	if err := a.Body.Close(); err != nil {
+	text, err := io.ReadAll(a.Body)
+	if err := errors.Join(err, a.Body.Close()); err != nil {
 		t.Fatal(err)
 	}
-	return a.StatusCode
+	return a.StatusCode, string(text)
+}
+
+// checkMetrics holds the guide's table of metrics equal to what the program serves, names and labels.
+func (r *running) checkMetrics(t *testing.T) {
+	t.Helper()
+	guide, err := os.ReadFile("../../DEVELOPERS.md")
+	if err != nil {
+		t.Fatal(err)
+	}
+	told := map[string]bool{}
+	for _, found := range regexp.MustCompile("(?m)^\\| `(lampward_[a-z_]+)").FindAllStringSubmatch(string(guide), -1) {
+		told[found[1]] = true
+	}
+	_, text := r.read(t, "/metrics")
+	served := map[string]bool{}
+	for _, found := range regexp.MustCompile(`(?m)^# TYPE (lampward_[a-z_]+) (\w+)$`).FindAllStringSubmatch(text, -1) {
+		name := found[1]
+		if found[2] == "counter" && !strings.HasSuffix(name, "_total") {
+			name += "_total"
+		}
+		served[name] = true
+	}
+	for _, state := range []string{"acquired", "idle", "max"} { // the alerts ask for these
+		if !strings.Contains(text, `lampward_db_pool_connections{state="`+state+`"}`) {
+			t.Errorf("no connections in the state %q", state)
+		}
+	}
+	if !maps.Equal(told, served) {
+		t.Errorf("the guide lists %v; the program serves %v", slices.Sorted(maps.Keys(told)), slices.Sorted(maps.Keys(served)))
+	}
 }
 
 // TestDemoServes: the demo answers, refuses a second one on its folder, is killed without mercy, comes back with all it had,
@@ -135,6 +177,7 @@ func TestDemoServes(t *testing.T) {
 			t.Errorf("%s answers %d", path, got)
 		}
 	}
+	first.checkMetrics(t)
 	exe, err := os.Executable()
 	if err != nil {
 		t.Fatal(err)

@@ -2,6 +2,7 @@ package review_test
 
 import (
 	"context"
+	"flag"
 	"fmt"
 	"io"
 	"testing"
@@ -69,45 +70,41 @@ func estate(b *testing.B, db *pgxpool.Pool, r *review.Reviewer, n int) (building
 	return buildings
 }
 
+// fixtures sizes the estates of the benchmarks here: go test ./domain/review -bench . -args -fixtures 1000000
+var fixtures = flag.Int("fixtures", 20_000, "luminaires in the estates of the benchmarks")
+
 // BenchmarkFullReview measures a second review of an estate against COPY TO STDOUT of the rows it reads, in one run.
 func BenchmarkFullReview(b *testing.B) {
-	for _, n := range []int{20_000, 1_000_000} {
-		b.Run(fmt.Sprintf("fixtures=%d", n), func(b *testing.B) {
-			if testing.Short() && n > 100_000 {
-				b.Skip("a million fixtures are for a run without -short")
-			}
-			db := domaintest.DB(b)
-			r := review.New()
-			estate(b, db, r, n)
-			now := func() time.Time { return domaintest.Noon }
-			ctx := context.Background()
-			conn, err := db.Acquire(ctx)
-			if err != nil {
+	db := domaintest.DB(b)
+	r := review.New()
+	estate(b, db, r, *fixtures)
+	now := func() time.Time { return domaintest.Noon }
+	ctx := context.Background()
+	conn, err := db.Acquire(ctx)
+	if err != nil {
+		b.Fatal(err)
+	}
+	defer conn.Release()
+	var copied, reviewed time.Duration
+	for b.Loop() {
+		start := time.Now()
+		for _, table := range []string{"circuit", "place"} {
+			if _, err := conn.Conn().PgConn().CopyTo(ctx, io.Discard, `COPY `+table+` TO STDOUT`); err != nil {
 				b.Fatal(err)
 			}
-			defer conn.Release()
-			var copied, reviewed time.Duration
-			for b.Loop() {
-				start := time.Now()
-				for _, table := range []string{"circuit", "place"} {
-					if _, err := conn.Conn().PgConn().CopyTo(ctx, io.Discard, `COPY `+table+` TO STDOUT`); err != nil {
-						b.Fatal(err)
-					}
-				}
-				copied += time.Since(start)
-				start = time.Now()
-				tally, err := r.Everything(ctx, db, now, nil)
-				if err != nil {
-					b.Fatal(err)
-				}
-				if tally.Opened+tally.Changed+tally.Cleared != 0 || tally.Places < n {
-					b.Fatalf("a second review found %+v", tally)
-				}
-				reviewed += time.Since(start)
-			}
-			b.ReportMetric(reviewed.Seconds()/copied.Seconds(), "x/copy")
-			b.ReportMetric(reviewed.Seconds()/float64(b.N), "s/review")
-			b.ReportMetric(copied.Seconds()/float64(b.N), "s/copy")
-		})
+		}
+		copied += time.Since(start)
+		start = time.Now()
+		tally, err := r.Everything(ctx, db, now, nil)
+		if err != nil {
+			b.Fatal(err)
+		}
+		if tally.Opened+tally.Changed+tally.Cleared != 0 || tally.Places < *fixtures {
+			b.Fatalf("a second review found %+v", tally)
+		}
+		reviewed += time.Since(start)
 	}
+	b.ReportMetric(reviewed.Seconds()/copied.Seconds(), "x/copy")
+	b.ReportMetric(reviewed.Seconds()/float64(b.N), "s/review")
+	b.ReportMetric(copied.Seconds()/float64(b.N), "s/copy")
 }
