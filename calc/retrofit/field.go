@@ -240,6 +240,29 @@ var fieldTexts = map[Field]FieldText{
 	FieldPairing:           {"ballast", "whether the tube's maker lists this ballast"},
 }
 
+// aside are the fields that nobody sees from a ladder and that seldom turn an answer about a place that is not on record:
+// they are told as to be confirmed.
+var aside = map[Field]bool{
+	FieldLampApproval: true, FieldLampPeak: true, FieldLampInrush: true,
+	FieldGearInrush: true, FieldGearLeakage: true,
+	FieldFittingMaxW: true, FieldFittingEnclosed: true, FieldFittingClass: true, FieldFittingIP: true,
+	FieldFixtureModel: true, FieldFixtureEarth: true, FieldFixtureLabel: true, FieldFixturePapers: true, FieldFixtureZone: true,
+	FieldDriverCable: true, FieldDriverCableMM2: true, FieldDriverCableClass: true, FieldDriverCableA: true, FieldDriverAir: true, FieldDriverTouchable: true,
+	FieldCircuitV: true, FieldCircuitRating: true, FieldCircuitCurve: true, FieldCircuitRCD: true, FieldCircuitRCDMA: true,
+	FieldCircuitNeutral: true, FieldCircuitBattery: true, FieldCircuitListed: true, FieldWiringRules: true,
+}
+
+// decides reports whether an answer to the question could turn a verdict. Nobody has recorded anything about a bare place.
+func (q *Question) decides(bare bool) bool {
+	switch {
+	case bare:
+		return !aside[q.Field] && (q.Blocks || q.Severity != Low)
+	default:
+		// Silence about approval is no sign of danger: a person has to have recorded that there is none.
+		return q.Field != FieldLampApproval && (q.Blocks || q.Severity != Low)
+	}
+}
+
 // Text returns how the field is asked for; a field without an entry is asked for by its name.
 func (f Field) Text() FieldText {
 	if t, ok := fieldTexts[f]; ok {

@@ -14,10 +14,17 @@ const (
 )
 
 // outputRules compare the form and voltage of an output with what the lamps on it need.
+// The end of extra-low voltage for alternating current, V (IEC 61140:2016), and the lowest nominal voltage of a public
+// mains, V (IEC 60038:2009).
+const (
+	extraLowV   = 50
+	leastMainsV = 100
+)
+
 var outputRules = []Rule{
 	{
 		ID: "output_voltage_mismatch", Severity: High, Blocks: true, Subject: OnDriver,
-		Trigger:  "gear of one nominal voltage on lamps of another, e.g. 24 V on a 12 V lamp or the reverse; a ballast on lamps for a voltage supply, or a voltage supply on lamps for a ballast",
+		Trigger:  "gear of one nominal voltage on lamps of another, e.g. 24 V on a 12 V lamp or the reverse; gear on lamps it is not made to feed: a ballast on lamps for a voltage, a voltage supply on lamps for a ballast or the mains, or no gear where a lamp needs it",
 		Why:      "Twice the voltage is three times the power of a filament and the end of an LED; half of it is a dim or dark lamp.",
 		Basis:    "nameplates; a 5 % match of dc supplies is common practice",
 		Remedy:   "Match the lamp's voltage and the gear's.",
@@ -212,7 +219,7 @@ func outputVoltageMismatch(v *driverView) {
 	out, ok := positive(v.g.OutputV)
 	for i := range v.lamps {
 		l := &v.lamps[i]
-		if !l.onVoltage() {
+		if !l.onVoltage() || v.needsOther(l) != "" {
 			continue
 		}
 		if !ok {
@@ -256,27 +263,12 @@ func outputVoltageMismatch(v *driverView) {
 }
 
 // wrongGear finds lamps whose stated supply is of another kind than the gear gives: a ballast or discharge gear limits a
-// discharge, it holds no voltage; a transformer or constant-voltage driver limits none.
+// discharge, it holds no voltage; a transformer or constant-voltage driver limits none, and what it gives is not the
+// mains. Tubes have rules of their own, and in a converted luminaire the ballast feeds nothing.
 func wrongGear(v *driverView) {
 	for i := range v.lamps {
 		l := &v.lamps[i]
-		if l.model == nil {
-			continue
-		}
-		needs := ""
-		switch v.kind {
-		case magneticBallast, electronicBallast, hidGear:
-			switch l.model.Supply {
-			case loading.SupplyELVAC, loading.SupplyELVDC, loading.SupplyELVACDC:
-				needs = "extra-low voltage"
-			case loading.SupplyConstantCurrent:
-				needs = "a constant current"
-			}
-		default:
-			if v.kind.voltageSource() && l.model.Supply == loading.SupplyGear {
-				needs = "a ballast"
-			}
-		}
+		needs := v.needsOther(l)
 		if needs == "" {
 			continue
 		}
@@ -284,6 +276,50 @@ func wrongGear(v *driverView) {
 		f.say("%s that %s %s %s on %s.", plural(l.count, "lamp"), v.verb(l.count, "needs", "need"), needs, v.verb(l.count, "hangs", "hang"), v.name())
 		f.step("gear and lamp", "lamp: needs "+needs+"; gear: "+v.kind.word(), "nameplates")
 	}
+}
+
+// needsOther says what a lamp needs that gear of this kind never gives; empty: it may suit.
+func (v *driverView) needsOther(l *lampLoad) string {
+	if l.model == nil {
+		return ""
+	}
+	switch v.kind {
+	case magneticBallast, electronicBallast, hidGear:
+		switch l.model.Supply {
+		case loading.SupplyELVAC, loading.SupplyELVDC, loading.SupplyELVACDC:
+			return "extra-low voltage"
+		case loading.SupplyConstantCurrent:
+			return "a constant current"
+		case loading.SupplyMainsAC:
+			if l.class != fluorescent && l.model.Technology != loading.LEDTube && !is(l.model.HIDGearCompatible) && !v.bypassed() {
+				return "the mains"
+			}
+		}
+		return ""
+	}
+	if !v.kind.voltageSource() {
+		return ""
+	}
+	switch l.model.Supply {
+	case loading.SupplyGear:
+		return "a ballast"
+	case loading.SupplyMainsAC:
+		// A wound transformer may also be one of mains voltages, e.g. 230 V to 120 V.
+		if out, ok := positive(v.g.OutputV); ok && out <= extraLowV || !ok && v.kind != magneticTransformer {
+			return "the mains"
+		}
+	}
+	return ""
+}
+
+// bypassed reports whether a luminaire on the gear was rewired around it.
+func (v *driverView) bypassed() bool {
+	for _, i := range v.fixtures {
+		if v.by.fixture[i].converted() {
+			return true
+		}
+	}
+	return false
 }
 
 // mainsV is the voltage of the circuit a place hangs on, V.
@@ -302,6 +338,23 @@ func lowVoltageLampOnMains(v *fixtureView) {
 	}
 	for i := range v.lamps {
 		l := &v.lamps[i]
+		if l.model != nil {
+			needs := ""
+			switch l.model.Supply {
+			case loading.SupplyConstantCurrent:
+				needs = "a constant current"
+			case loading.SupplyGear:
+				if l.model.Technology != loading.LEDTube && !v.converted() { // else the rules of tubes say it
+					needs = "a ballast"
+				}
+			}
+			if needs != "" {
+				f := v.foundLamp(l, High, judgement{fails: true, sure: Recorded})
+				f.say("%s that %s %s %s straight on the circuit, without control gear.", plural(l.count, "lamp"), v.verb(l.count, "needs", "need"), needs, v.verb(l.count, "hangs", "hang"))
+				f.step("gear and lamp", "lamp: needs "+needs+"; gear: none", "the record")
+				continue
+			}
+		}
 		if !l.onVoltage() || !l.lowVoltage() {
 			continue
 		}
@@ -310,6 +363,12 @@ func lowVoltageLampOnMains(v *fixtureView) {
 			continue // it may be a mains lamp; what supply it needs is asked where that decides
 		}
 		mains, hasMains := v.mainsV(v.circuit)
+		if !hasMains && v.by.sys.Proposal && l.model.Supply != "" && !exceeds(otherNominal*rated, leastMainsV) {
+			f := v.foundLamp(l, High, judgement{fails: true, sure: Recorded})
+			f.say("%s for extra-low voltage %s straight on the mains, without control gear.", plural(l.count, "lamp"), v.verb(l.count, "hangs", "hang"))
+			f.step("gear and lamp", "lamp: needs extra-low voltage; gear: none", "nameplates; the lowest mains voltage is 100 V (IEC 60038:2009)")
+			continue
+		}
 		if !hasMains {
 			v.ask(FieldCircuitV, v.aboutCircuit())
 			continue

@@ -62,6 +62,25 @@ func TestOutputRules(t *testing.T) {
 			{name: "module on a ballast", build: fed(loading.Gear{Kind: loading.ElectronicBallast}, of(1, module())), findings: 1, severity: High, blocks: true, sure: Recorded, says: "a constant current"},
 			{name: "lamp for a ballast on a ballast", build: fed(loading.Gear{Kind: loading.MagneticBallast}, of(1, loading.Lamp{Technology: loading.Fluorescent, Supply: loading.SupplyGear}))},
 			{name: "lamp for a ballast on 12 V", build: fed(v12(60), of(1, loading.Lamp{Technology: loading.Fluorescent, Supply: loading.SupplyGear})), findings: 1, severity: High, blocks: true, sure: Recorded, says: "a ballast"},
+			{name: "mains LED lamp on a ballast", build: fed(loading.Gear{Kind: loading.MagneticBallast}, of(1, mainsLED(9, fixed))), findings: 1, severity: High, blocks: true, sure: Recorded, says: "the mains"},
+			{name: "mains LED lamp in a luminaire rewired around its ballast", build: func(r *rig) {
+				fed(loading.Gear{Kind: loading.MagneticBallast}, of(1, mainsLED(9, fixed)))(r)
+				r.Fixtures[0].Conversion = "gear_bypassed"
+			}},
+			{name: "LED lamp made for discharge gear", build: fed(loading.Gear{Kind: loading.HIDGearWithIgnitor}, of(1, with(mainsLED(9, fixed), func(m *loading.Lamp) { m.HIDGearCompatible = some(true) })))},
+			{name: "tube on a ballast has a rule of its own", build: fed(loading.Gear{Kind: loading.MagneticBallast}, of(1, with(mainsLED(9, fixed), func(m *loading.Lamp) { m.Technology = loading.LEDTube })))},
+			{name: "mains LED lamp on an electronic transformer", build: fed(with(transformer(60, 0), func(g *loading.Gear) { g.OutputV = nil }), of(1, mainsLED(9, fixed))), findings: 1, severity: High, blocks: true, sure: Recorded, says: "the mains"},
+			// 50 V is the end of extra-low voltage (IEC 61140).
+			{name: "mains LED lamp on 50 V", build: fed(with(wound(60), func(g *loading.Gear) { g.OutputV = some(50.0) }), of(1, mainsLED(9, fixed))), findings: 1, severity: High, blocks: true, sure: Recorded, says: "the mains"},
+			{name: "120 V lamp on a transformer to 120 V", build: fed(with(wound(60), func(g *loading.Gear) { g.OutputV = some(120.0) }), of(1, with(mainsLED(9, fixed), func(m *loading.Lamp) { m.RatedV = some(120.0) })))},
+			{name: "module straight on the circuit", build: func(r *rig) { r.straight(-1, nil, of(1, module())) }, findings: 1, severity: High, blocks: true, sure: Recorded, says: "a constant current"},
+			{name: "lamp for a ballast straight on the circuit", build: func(r *rig) {
+				r.straight(-1, nil, of(1, loading.Lamp{Technology: loading.Fluorescent, Supply: loading.SupplyGear}))
+			}, findings: 1, severity: High, blocks: true, sure: Recorded, says: "a ballast"},
+			{name: "12 V lamp proposed straight on a mains nobody named", build: func(r *rig) {
+				r.MainsV, r.Proposal = nil, true
+				r.straight(-1, nil, of(1, halogen12(20)))
+			}, findings: 1, severity: High, blocks: true, sure: Recorded, says: "straight on the mains"},
 		},
 		"dc_lamp_on_ac": {
 			// √2 × 12 − 1.4 = 15.57 V.

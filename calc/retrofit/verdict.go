@@ -17,17 +17,19 @@ const (
 
 // Advice is the answer with its reasons.
 type Advice struct {
-	Answer   Answer     `json:"answer"`
-	Sum      string     `json:"sum"`                // the answer's arithmetic in one line
-	Findings []Finding  `json:"findings,omitempty"` // what the proposal brings or has part in, the worst first
-	Missing  []Question `json:"missing,omitempty"`  // facts that could change the answer, the most useful first
+	Answer    Answer     `json:"answer"`
+	Sum       string     `json:"sum"`                  // the answer's arithmetic in one line
+	Findings  []Finding  `json:"findings,omitempty"`   // what the proposal brings or has part in, the worst first
+	Missing   []Question `json:"missing,omitempty"`    // facts that could change the answer, the most useful first
+	ToConfirm []Question `json:"to_confirm,omitempty"` // facts not known that seldom change it
 }
 
 // Verdict answers "may I fit this here?" from a check of the places as they are and one of them as proposed, with what
 // would be fitted marked as proposed. Before may be empty for a place nobody has recorded.
 //
 // It says no where the proposal brings or worsens a blocking finding, or has part in one; yes only where nothing above
-// Low comes of it and nothing that could matter is unknown.
+// Low comes of it and nothing that could turn the answer is unknown. What is unknown and seldom matters is told as to be
+// confirmed: of a place nobody has recorded that is all that cannot be seen from a ladder.
 func Verdict(before, after Result) Advice {
 	concerns := newOrProposed(before, after)
 	a := Advice{Answer: Fit, Sum: after.Sum}
@@ -51,7 +53,14 @@ func Verdict(before, after Result) Advice {
 		// Of two that weigh the same, the one with a number says more.
 		return cmp.Or(boolCompare(y.Blocks, x.Blocks), cmp.Compare(Weight(y.Severity, y.Lamps), Weight(x.Severity, x.Lamps)), cmp.Compare(y.Excess, x.Excess))
 	})
-	a.Missing = missing(before, after)
+	bare := before.Coverage.Places == 0 && len(before.Findings) == 0 && len(before.Questions) == 0
+	for _, q := range missing(before, after) {
+		if q.decides(bare) {
+			a.Missing = append(a.Missing, q)
+		} else {
+			a.ToConfirm = append(a.ToConfirm, q)
+		}
+	}
 	if len(a.Missing) > 0 || after.Coverage.Places == 0 {
 		a.Answer = FitOnlyIf
 	}

@@ -100,7 +100,6 @@ func TestNothingUnknownFits(t *testing.T) {
 		"lamp voltage":     func(r *rig) { r.Fixtures[0].Lamps[0].Model.RatedV = nil },
 		"lamp supply":      func(r *rig) { r.Fixtures[0].Lamps[0].Model.Supply = "" },
 		"lamp technology":  func(r *rig) { r.Fixtures[0].Lamps[0].Model.Technology = "" },
-		"lamp approval":    func(r *rig) { r.Fixtures[0].Lamps[0].Model.Approval = nil },
 		"lamp":             func(r *rig) { r.Fixtures[0].Lamps[0].Model = nil },
 		"gear":             func(r *rig) { r.Drivers[0].Model = nil },
 		"gear kind":        func(r *rig) { r.Drivers[0].Model.Kind = "" },
@@ -109,8 +108,6 @@ func TestNothingUnknownFits(t *testing.T) {
 		"gear output":      func(r *rig) { r.Drivers[0].Model.OutputV = nil },
 		"gear input":       func(r *rig) { r.Drivers[0].Model.InputMaxV = nil },
 		"feed":             func(r *rig) { r.Fixtures[0].Driver = -1 },
-		"breaker":          func(r *rig) { r.Circuits[0].RatingA = nil },
-		"cable":            func(r *rig) { r.Drivers[0].CableM = nil },
 		"other lamps":      func(r *rig) { r.Fixtures[0].LampsUnknown = true },
 		"absurd maximum":   func(r *rig) { r.Drivers[0].Model.MaxLoadW = some(math.Inf(1)) },
 		"negative maximum": func(r *rig) { r.Drivers[0].Model.MaxLoadW = some(-60.0) },
@@ -128,6 +125,35 @@ func TestNothingUnknownFits(t *testing.T) {
 			got := Verdict(Result{}, Check(&r.System))
 			if got.Answer == Fit || len(got.Missing) == 0 && got.Answer == FitOnlyIf {
 				t.Errorf("%s, missing %v", got.Answer, got.Missing)
+			}
+		})
+	}
+}
+
+// TestToConfirm: what cannot be seen from a ladder is told and does not spoil the answer about a place nobody recorded;
+// of a place on record it does, but for approval, which silence says nothing against.
+func TestToConfirm(t *testing.T) {
+	t.Parallel()
+	recorded := Result{Coverage: Coverage{Places: 1}}
+	for name, tt := range map[string]struct {
+		forget func(*rig)
+		field  Field
+		record Answer
+	}{
+		"approval": {func(r *rig) { r.Fixtures[0].Lamps[0].Model.Approval = nil }, FieldLampApproval, Fit},
+		"breaker":  {func(r *rig) { r.Circuits[0].RatingA = nil }, FieldCircuitRating, FitOnlyIf},
+		"cable":    {func(r *rig) { r.Drivers[0].CableM = nil }, FieldDriverCable, FitOnlyIf},
+	} {
+		t.Run(name, func(t *testing.T) {
+			t.Parallel()
+			r := suited()
+			tt.forget(r)
+			bare := Verdict(Result{}, Check(&r.System))
+			if bare.Answer != Fit || len(bare.Missing) != 0 || !slices.ContainsFunc(bare.ToConfirm, func(q Question) bool { return q.Field == tt.field }) {
+				t.Errorf("off the ladder %s, missing %v, to confirm %v", bare.Answer, bare.Missing, bare.ToConfirm)
+			}
+			if got := Verdict(recorded, Check(&r.System)); got.Answer != tt.record {
+				t.Errorf("on record %s, missing %v, to confirm %v", got.Answer, got.Missing, got.ToConfirm)
 			}
 		})
 	}

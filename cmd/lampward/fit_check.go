@@ -112,15 +112,22 @@ func (s *streams) answer(a review.FitAnswer) {
 		}
 		fmt.Fprintf(s.out, "      what to do: %s\n", f.Remedy)
 	}
-	if len(a.Missing) > 0 {
-		fmt.Fprintf(s.out, "\n  still to find out, the most useful first:\n")
-		for _, m := range a.Missing {
-			about := ""
-			if m.About != "" {
-				about = " (" + m.About + ")"
-			}
-			fmt.Fprintf(s.out, "    - %s%s\n", m.Ask, about)
-		}
-	}
+	s.asks("still to find out, the most useful first", a.Missing)
+	s.asks("to confirm", a.Confirm)
 	fmt.Fprintf(s.out, "\nA screening estimate. Local codes and licensed practice decide.\n")
+}
+
+// asks writes a list of facts that are not known.
+func (s *streams) asks(title string, list []review.MissingFact) {
+	if len(list) == 0 {
+		return
+	}
+	fmt.Fprintf(s.out, "\n  %s:\n", title)
+	for _, m := range list {
+		about := ""
+		if m.About != "" {
+			about = " (" + m.About + ")"
+		}
+		fmt.Fprintf(s.out, "    - %s%s\n", m.Ask, about)
+	}
 }

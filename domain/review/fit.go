@@ -52,14 +52,14 @@ type Keep struct {
 
 // A FitAnswer is the answer with its reasons. It is a screening estimate; local codes and licensed practice decide.
 type FitAnswer struct {
-	Answer   string          `json:"answer"` // fit, do_not_fit, fit_only_if
-	Sum      string          `json:"sum"`    // the arithmetic in one line
-	Findings []FitFinding    `json:"findings"`
-	Missing  []MissingFact   `json:"missing"` // facts that could change the answer, the most useful first
-	Cautions []Caution       `json:"cautions"`
-	Options  []Option        `json:"options,omitempty"`
-	Kept     *KeptPlace      `json:"kept,omitempty"`
-	advice   retrofit.Advice // for callers in this package
+	Answer   string        `json:"answer"` // fit, do_not_fit, fit_only_if
+	Sum      string        `json:"sum"`    // the arithmetic in one line
+	Findings []FitFinding  `json:"findings"`
+	Missing  []MissingFact `json:"missing"`    // facts that could change the answer, the most useful first
+	Confirm  []MissingFact `json:"to_confirm"` // facts not known that seldom change it
+	Cautions []Caution     `json:"cautions"`
+	Options  []Option      `json:"options,omitempty"`
+	Kept     *KeptPlace    `json:"kept,omitempty"`
 }
 
 // Caution is what people must know before they work at a place.
@@ -274,7 +274,7 @@ func cautionsAt(sys *loading.System, fixture int) []Caution {
 }
 
 func newAnswer(a retrofit.Advice, cautions []Caution) FitAnswer {
-	out := FitAnswer{Answer: string(a.Answer), Sum: a.Sum, Findings: []FitFinding{}, Missing: missingFacts(a.Missing), Cautions: cautions, advice: a}
+	out := FitAnswer{Answer: string(a.Answer), Sum: a.Sum, Findings: []FitFinding{}, Missing: missingFacts(a.Missing), Confirm: missingFacts(a.ToConfirm), Cautions: cautions}
 	for i := range a.Findings {
 		out.Findings = append(out.Findings, newFitFinding(&a.Findings[i]))
 	}

@@ -203,9 +203,11 @@ func safe(a retrofit.Advice) bool {
 			return false
 		}
 	}
-	for i := range a.Missing {
-		if a.Missing[i].Blocks {
-			return false
+	for _, list := range [][]retrofit.Question{a.Missing, a.ToConfirm} {
+		for i := range list {
+			if list[i].Blocks {
+				return false
+			}
 		}
 	}
 	return a.Answer != retrofit.DoNotFit
@@ -259,7 +261,7 @@ func (o *optioner) with(sys *loading.System, lamp *plant.LampModel, driver *plan
 }
 
 func (o *optioner) option(lamp *plant.LampModel, driver *plant.DriverModel, dimmer *plant.DimmerModel, a retrofit.Advice) Option {
-	out := Option{LampModelID: lamp.ID, Lamp: lamp.Name, Lamps: o.count, ToConfirm: missingFacts(a.Missing), Notes: []string{}, CostSteps: []Step{}}
+	out := Option{LampModelID: lamp.ID, Lamp: lamp.Name, Lamps: o.count, ToConfirm: missingFacts(slices.Concat(a.Missing, a.ToConfirm)), Notes: []string{}, CostSteps: []Step{}}
 	for i := range a.Findings {
 		out.Notes = append(out.Notes, a.Findings[i].Sentence)
 	}
@@ -381,7 +383,7 @@ func (o *optioner) confirm(t *Tree, found []Option) []Option {
 			after.Dimmers[o.dimmed()].Proposed = true
 		}
 		if a := retrofit.Verdict(before, retrofit.Check(after)); safe(a) {
-			option.ToConfirm = missingFacts(a.Missing)
+			option.ToConfirm = missingFacts(slices.Concat(a.Missing, a.ToConfirm))
 			out = append(out, option)
 		}
 	}

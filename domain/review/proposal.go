@@ -195,7 +195,7 @@ func (t *trial) tree(s domain.Scope, cat *plant.Catalogue, tree *Tree, p *Propos
 	}
 	advice := retrofit.Verdict(was, is)
 	t.out.Refused = t.out.Refused || advice.Answer == retrofit.DoNotFit
-	t.missing = append(t.missing, advice.Missing...)
+	t.missing = append(append(t.missing, advice.Missing...), advice.ToConfirm...)
 	opened, cleared := difference(was.Findings, is.Findings)
 	show := func(list []*retrofit.Finding) (out []WhatFinding) {
 		for _, f := range list {
