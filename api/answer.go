@@ -151,13 +151,7 @@ func (s *Server) checkProposal(c *call) (reply, error) {
 			return reply{body: w}, err
 		}
 		if q.Override != nil {
-			check := domain.NewCheck("override")
-			check.Text("/override/why", q.Override.Why)
-			if q.Override.Why == "" {
-				check.Add("/override/why", "must say why")
-			}
-			check.Date("/override/until", &q.Override.Until)
-			if err := check.Err(); err != nil {
+			if err := review.Override(c.ctx, sc, &w, "/override", q.Override.Why, q.Override.Until); err != nil {
 				return reply{}, err
 			}
 			event.Record(sc, event.Act{Action: "proposal.overridden", Kind: "building", ID: c.building,

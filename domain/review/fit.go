@@ -197,7 +197,11 @@ func FitCheck(cat *plant.Catalogue, supply loading.Supply, q *FitRequest) (FitAn
 			advice.Answer = retrofit.FitOnlyIf
 		}
 	}
-	return newAnswer(advice, cautionsAt(sys, 0)), nil
+	a := newAnswer(advice, cautionsAt(sys, 0))
+	if a.Answer == DoesNotFit {
+		a.Options = bareOptions(cat, sys)
+	}
+	return a, nil
 }
 
 // system is what the request describes, as far as it does.
@@ -211,12 +215,7 @@ func (q *FitRequest) system(cat *plant.Catalogue, supply loading.Supply) *loadin
 	var controls []loading.Controlled
 	if dimmer := q.dimmer(cat); dimmer != nil {
 		sys.Dimmers = []loading.Dimmer{{Model: dimmer, Circuit: 0}}
-		path := loading.PowerPath
-		switch dimmer.Kind {
-		case loading.DALI, loading.Analogue0to10V, loading.Analogue1to10V:
-			path = loading.Signal
-		}
-		controls = []loading.Controlled{{Dimmer: 0, Path: path}}
+		controls = []loading.Controlled{{Dimmer: 0, Path: pathOf(dimmer)}}
 	}
 	fixture := loading.Fixture{Model: q.fitting(cat), GearNone: q.GearNone, Driver: -1, Circuit: 0}
 	if !q.GearNone {
@@ -237,6 +236,15 @@ func (q *FitRequest) system(cat *plant.Catalogue, supply loading.Supply) *loadin
 	}
 	sys.Fixtures = []loading.Fixture{fixture}
 	return sys
+}
+
+// pathOf says what a dimmer acts by: it sits in the feed, or it sends a signal.
+func pathOf(dimmer *loading.Control) string {
+	switch dimmer.Kind {
+	case loading.DALI, loading.Analogue0to10V, loading.Analogue1to10V:
+		return loading.Signal
+	}
+	return loading.PowerPath
 }
 
 func lampOf(cat *plant.Catalogue, id *domain.ID, printed *loading.Lamp) *loading.Lamp {
@@ -325,8 +333,14 @@ func (r *Reviewer) FitAtPlace(ctx context.Context, s domain.Scope, q *FitRequest
 	after := propose(&t.System)
 	lamp := lampOf(cat, q.LampModelID, q.Lamp)
 	relamp(&after.Fixtures[i], lamp, q.Holder)
-	advice := retrofit.Verdict(before, retrofit.Check(after))
-	return newAnswer(advice, cautionsAt(after, i)), nil
+	a := newAnswer(retrofit.Verdict(before, retrofit.Check(after)), cautionsAt(after, i))
+	if a.Answer == DoesNotFit {
+		// A place whose lamps nobody could name has no options; the answer stands without them.
+		if a.Options, err = optionsAt(ctx, s, cat, t, *q.PlaceID); domain.KindOf(err) == domain.Conflict {
+			err = nil
+		}
+	}
+	return a, err
 }
 
 // treeOf loads and builds the tree of one place or circuit.
@@ -382,6 +396,15 @@ func propose(sys *loading.System) *loading.System {
 	return &after
 }
 
+// refit proposes gear in the place of what is there: what hangs on it was chosen for the separation of the gear before it,
+// and a current somebody set goes with the gear it was set on.
+func refit(d *loading.Driver, g *loading.Gear) {
+	if d.Model != nil && d.Model.Key != g.Key && d.Model.Separation != "" {
+		d.SeparationBefore = d.Model.Separation
+	}
+	d.Model, d.Proposed, d.SetMA = g, true, g.OutputMaxMA
+}
+
 // relamp proposes a lamp in one holder of a luminaire, or in all of them where holder is 0. A lamp in one holder of
 // several takes the place of one of the largest group.
 func relamp(f *loading.Fixture, lamp *loading.Lamp, holder int) {
@@ -408,23 +431,39 @@ func relamp(f *loading.Fixture, lamp *loading.Lamp, holder int) {
 	f.Lamps = append(f.Lamps, loading.LampGroup{Model: lamp, Count: 1, Proposed: true})
 }
 
-// Store keeps what a fit check described as places of s's building: the gear, the dimmer and one luminaire with its
-// lamps as proposed if fitted is true, else with those that stay. Models that are not in the catalogue were stored by
-// KeepModels first, so every part has its identifier.
+// Store keeps what a fit check described as places of s's building: the gear, the dimmer and a luminaire for each kind of
+// lamp on it, those proposed only if fitted is true. Models that are not in the catalogue were stored by KeepModels
+// first, so every part has its identifier.
 func (r *Reviewer) Store(ctx context.Context, s domain.Scope, q *FitRequest, fitted bool) (KeptPlace, Outcome, error) {
 	var kept KeptPlace
+	cat, err := r.Shelf.At(ctx, s)
+	if err != nil {
+		return kept, Outcome{}, err
+	}
 	out, err := r.Change(ctx, s, Touch{}, func(e *plant.Edit) error {
 		kept = KeptPlace{FixtureIDs: []domain.ID{}}
 		head := func() plant.PlaceHead {
 			return plant.PlaceHead{SpaceID: q.Keep.SpaceID, Position: q.Keep.Position, FactSource: loading.SeenOnNameplate}
 		}
 		var feed *domain.ID
+		signal := false
 		if q.DimmerModelID != nil {
 			d := plant.Dimmer{PlaceHead: head(), DimmerModelID: q.DimmerModelID}
 			if err := e.CreateDimmer(ctx, &d); err != nil {
 				return err
 			}
-			kept.DimmerID, feed = &d.ID, &d.ID
+			kept.DimmerID = &d.ID
+			if m := cat.Dimmers[*q.DimmerModelID]; m != nil && pathOf(&m.Control) == loading.Signal {
+				signal = true
+			} else {
+				feed = &d.ID
+			}
+		}
+		controlled := func(place domain.ID) error {
+			if !signal {
+				return nil
+			}
+			return e.CreateControl(ctx, &plant.ControlLink{DimmerID: *kept.DimmerID, PlaceID: &place, Position: 1, Path: loading.Signal})
 		}
 		if q.DriverModelID != nil {
 			d := plant.Driver{PlaceHead: head(), DriverModelID: q.DriverModelID}
@@ -432,38 +471,60 @@ func (r *Reviewer) Store(ctx context.Context, s domain.Scope, q *FitRequest, fit
 			if err := e.CreateDriver(ctx, &d); err != nil {
 				return err
 			}
+			if err := controlled(d.ID); err != nil {
+				return err
+			}
 			kept.DriverID, feed = &d.ID, &d.ID
 		}
-		f := plant.Fixture{PlaceHead: head(), FixtureModelID: q.FixtureModelID}
-		f.Tag, f.FedByPlaceID = q.Keep.Tag, feed
-		switch {
-		case q.GearNone:
-			f.Gear = "none"
-		case q.DriverModelID != nil:
-			f.Gear = "remote"
-		}
-		lamp, count := q.LampModelID, q.Lamps
-		if !fitted {
-			lamp, count = nil, 0
-			if len(q.Staying) > 0 {
-				lamp, count = q.Staying[0].LampModelID, q.Staying[0].Count
+		for i, group := range q.kept(fitted) {
+			f := plant.Fixture{PlaceHead: head(), FixtureModelID: q.FixtureModelID, LampModelID: group.LampModelID}
+			f.FedByPlaceID = feed
+			if i == 0 {
+				f.Tag = q.Keep.Tag
+			}
+			switch {
+			case q.GearNone:
+				f.Gear = "none"
+			case q.DriverModelID != nil:
+				f.Gear = "remote"
+			}
+			if group.Count > 0 {
+				f.LampCount = &group.Count
+			}
+			if fitted && i == 0 {
+				at := s.At.Truncate(time.Second)
+				f.LampsFittedAt = &at
+			}
+			if err := e.CreateFixture(ctx, &f); err != nil {
+				return err
+			}
+			if q.DriverModelID == nil {
+				if err := controlled(f.ID); err != nil {
+					return err
+				}
+			}
+			kept.FixtureIDs = append(kept.FixtureIDs, f.ID)
+			if i == 0 {
+				kept.Tag = f.Tag
 			}
 		}
-		f.LampModelID = lamp
-		if count > 0 {
-			f.LampCount = &count
-		}
-		if fitted {
-			at := s.At.Truncate(time.Second)
-			f.LampsFittedAt = &at
-		}
-		if err := e.CreateFixture(ctx, &f); err != nil {
-			return err
-		}
-		kept.FixtureIDs, kept.Tag = append(kept.FixtureIDs, f.ID), f.Tag
 		return nil
 	})
 	return kept, out, err
+}
+
+// kept are the lamps that a place is kept with, a luminaire for each kind: those proposed first if they are fitted, and
+// those that stay. There is one luminaire at least, whose lamps are then not known.
+func (q *FitRequest) kept(fitted bool) []LampsOf {
+	var groups []LampsOf
+	if fitted {
+		groups = append(groups, LampsOf{LampModelID: q.LampModelID, Count: q.Lamps})
+	}
+	groups = append(groups, q.Staying...)
+	if len(groups) == 0 {
+		groups = []LampsOf{{}}
+	}
+	return groups
 }
 
 // KeepModels stores, as provisional models, what a fit check described by what is printed on it, and makes the

@@ -17,10 +17,12 @@ import (
 // optionYears is the horizon over which options are ranked.
 const optionYears = 10
 
-// mostOptions is how many options are returned; mostCombinations how many are looked at.
+// mostOptions is how many options are returned; mostCombinations how many are looked at at a place on record.
 const (
 	mostOptions      = 20
 	mostCombinations = 20_000
+	// Off the ladder the answer has to come in a millisecond.
+	mostBareCombinations = 200
 )
 
 // An Option is a combination that may safely be fitted at a place and on all that hangs on its gear: nothing above low
@@ -51,6 +53,7 @@ type optioner struct {
 	sys    *loading.System // the gear with all its luminaires, alone on its circuit
 	driver int             // position of the gear in sys; -1: none
 	count  int             // lamps on it
+	most   int             // combinations looked at
 	before retrofit.Result
 	check  retrofit.Checker
 }
@@ -66,32 +69,58 @@ func (r *Reviewer) Options(ctx context.Context, s domain.Scope, place domain.ID)
 	if err != nil {
 		return nil, err
 	}
+	return optionsAt(ctx, s, cat, t, place)
+}
+
+func optionsAt(ctx context.Context, s domain.Scope, cat *plant.Catalogue, t *Tree, place domain.ID) ([]Option, error) {
 	i := t.fixture(place)
 	if i < 0 {
 		return nil, domain.Conflictf("options are for luminaires; this place is another kind")
 	}
-	o := &optioner{cat: cat}
+	o := &optioner{cat: cat, most: mostCombinations}
 	if err := o.load(ctx, s, t, place); err != nil {
 		return nil, err
 	}
 	o.sys, o.driver = part(&t.System, i)
 	o.before = retrofit.Check(o.sys)
+	cap := capOf(&t.System.Fixtures[i])
+	if cap == "" {
+		return nil, &domain.Error{Kind: domain.Conflict, Msg: "the cap of the lamps is not on record, so no lamp can be named: record fixture_model.cap or the lamp now fitted"}
+	}
+	for j := range o.sys.Fixtures {
+		if other := capOf(&o.sys.Fixtures[j]); other != "" && other != cap {
+			return nil, domain.Conflictf("lamps of caps %s and %s hang on the same gear, so no one lamp suits all: move the luminaires of one cap to other gear first", cap, other)
+		}
+	}
+	return o.confirm(t, o.ranked(cap)), nil
+}
+
+// bareOptions returns what of the catalogue would do where nothing is on record, what cannot be seen from a ladder aside.
+// The cost is left out: neither hours nor rates are known there.
+func bareOptions(cat *plant.Catalogue, sys *loading.System) []Option {
+	cap := capOf(&sys.Fixtures[0])
+	if cap == "" {
+		return nil
+	}
+	o := &optioner{cat: cat, most: mostBareCombinations, sys: sys, driver: sys.Fixtures[0].Driver}
+	out := o.ranked(cap)
+	return out[:min(len(out), mostOptions)]
+}
+
+// ranked searches and puts the cheapest first.
+func (o *optioner) ranked(cap string) []Option {
 	for j := range o.sys.Fixtures {
 		for _, g := range o.sys.Fixtures[j].Lamps {
 			o.count += g.Count
 		}
 	}
 	o.count = max(o.count, 1)
-	cap := capOf(&t.System.Fixtures[i])
-	if cap == "" {
-		return nil, &domain.Error{Kind: domain.Conflict, Msg: "the cap of the lamps is not on record, so no lamp can be named: record fixture_model.cap or the lamp now fitted"}
-	}
 	found := o.search(cap)
 	slices.SortStableFunc(found, func(a, b Option) int {
 		return cmp.Or(boolInt(a.Cost == nil)-boolInt(b.Cost == nil), cmp.Compare(a.cost, b.cost),
 			boolInt(a.DriverModelID != nil)-boolInt(b.DriverModelID != nil), cmp.Compare(len(a.ToConfirm), len(b.ToConfirm)), cmp.Compare(a.Lamp, b.Lamp))
 	})
-	return o.confirm(t, found), nil
+	return found
 }
 
 func boolInt(b bool) int {
@@ -182,12 +211,12 @@ func (o *optioner) search(cap string) []Option {
 	for _, dimmer := range dimmers {
 		for _, driver := range drivers {
 			for _, lamp := range lamps {
-				if tried++; tried > mostCombinations {
+				if tried++; tried > o.most {
 					return found
 				}
 				sys := o.with(o.sys, lamp, driver, dimmer)
 				a := retrofit.Verdict(o.before, o.check.Check(sys))
-				if safe(a) {
+				if safe(a, o.most == mostBareCombinations) {
 					found = append(found, o.option(lamp, driver, dimmer, a))
 				}
 			}
@@ -196,19 +225,17 @@ func (o *optioner) search(cap string) []Option {
 	return found
 }
 
-// safe reports whether nothing above low comes of a proposal and no blocking rule waits for a fact.
-func safe(a retrofit.Advice) bool {
+// safe reports whether nothing above low comes of a proposal and no blocking rule waits for a fact; of a place that is not
+// on record, for one that can be seen.
+func safe(a retrofit.Advice, seen bool) bool {
 	for i := range a.Findings {
 		if a.Findings[i].Blocks || a.Findings[i].Severity != retrofit.Low {
 			return false
 		}
 	}
-	for _, list := range [][]retrofit.Question{a.Missing, a.ToConfirm} {
-		for i := range list {
-			if list[i].Blocks {
-				return false
-			}
-		}
+	blocks := func(q retrofit.Question) bool { return q.Blocks }
+	if slices.ContainsFunc(a.Missing, blocks) || !seen && slices.ContainsFunc(a.ToConfirm, blocks) {
+		return false
 	}
 	return a.Answer != retrofit.DoNotFit
 }
@@ -250,8 +277,7 @@ func (o *optioner) with(sys *loading.System, lamp *plant.LampModel, driver *plan
 		relamp(&after.Fixtures[i], &lamp.Lamp, 0)
 	}
 	if driver != nil {
-		after.Drivers[o.driver].Model, after.Drivers[o.driver].Proposed = &driver.Gear, true
-		after.Drivers[o.driver].SetMA = driver.OutputMaxMA
+		refit(&after.Drivers[o.driver], &driver.Gear)
 	}
 	if dimmer != nil {
 		d := o.dimmed()
@@ -373,8 +399,7 @@ func (o *optioner) confirm(t *Tree, found []Option) []Option {
 		if option.DriverModelID != nil {
 			for i := range after.Drivers {
 				if after.Drivers[i].Key == o.sys.Drivers[o.driver].Key && !after.Drivers[i].Integral {
-					m := o.cat.Drivers[*option.DriverModelID]
-					after.Drivers[i].Model, after.Drivers[i].Proposed, after.Drivers[i].SetMA = &m.Gear, true, m.OutputMaxMA
+					refit(&after.Drivers[i], &o.cat.Drivers[*option.DriverModelID].Gear)
 				}
 			}
 		}
@@ -382,7 +407,7 @@ func (o *optioner) confirm(t *Tree, found []Option) []Option {
 			after.Dimmers[o.dimmed()].Model = &o.cat.Dimmers[*option.DimmerModelID].Control
 			after.Dimmers[o.dimmed()].Proposed = true
 		}
-		if a := retrofit.Verdict(before, retrofit.Check(after)); safe(a) {
+		if a := retrofit.Verdict(before, retrofit.Check(after)); safe(a, false) {
 			option.ToConfirm = missingFacts(slices.Concat(a.Missing, a.ToConfirm))
 			out = append(out, option)
 		}

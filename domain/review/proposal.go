@@ -38,7 +38,9 @@ type WhatIf struct {
 	AfterKWh  *float64      `json:"energy_after_kwh_per_year,omitempty"`
 	BeforeRel *float64      `json:"relamps_before_per_year,omitempty"` // burning hours over rated life
 	AfterRel  *float64      `json:"relamps_after_per_year,omitempty"`
-	Loads     []LoadChange  `json:"loads,omitempty"` // of the gear, dimmers and circuits changed, at most 100
+	Loads     []LoadChange  `json:"loads,omitempty"`   // of the gear, dimmers and circuits changed, at most 100
+	Waivers   []Waiver      `json:"waivers,omitempty"` // made by whoever overrode the refusal
+	refusing  []Finding     // what it is refused for, as the findings will be recorded once it is fitted
 }
 
 // A WhatFinding is a finding that a proposal opens or clears.
@@ -188,15 +190,20 @@ func (t *trial) tree(s domain.Scope, cat *plant.Catalogue, tree *Tree, p *Propos
 	}
 	t.buildings[s.Building] = true
 	was, is := t.before.Check(&tree.System), t.after.Check(after)
-	for _, f := range retrofit.Compare(was, is) {
-		if f.Blocks {
-			t.out.Refused = true
+	opened, cleared := difference(was.Findings, is.Findings)
+	worse := retrofit.Compare(was, is)
+	for _, f := range opened {
+		// Where no number says that it is less bad than before, the same trouble by another model is new trouble.
+		if f.Blocks && f.Excess == 0 && !slices.ContainsFunc(worse, func(w retrofit.Finding) bool { return sameFinding(&w, f) }) {
+			worse = append(worse, *f)
 		}
 	}
+	for i := range worse {
+		t.out.Refused = true
+		t.out.refusing = append(t.out.refusing, newFinding(s, tree.ID, &worse[i]))
+	}
 	advice := retrofit.Verdict(was, is)
-	t.out.Refused = t.out.Refused || advice.Answer == retrofit.DoNotFit
 	t.missing = append(append(t.missing, advice.Missing...), advice.ToConfirm...)
-	opened, cleared := difference(was.Findings, is.Findings)
 	show := func(list []*retrofit.Finding) (out []WhatFinding) {
 		for _, f := range list {
 			id := domain.ID(f.Subject.Key)
@@ -212,26 +219,33 @@ func (t *trial) tree(s domain.Scope, cat *plant.Catalogue, tree *Tree, p *Propos
 	t.loads(s, tree, after, labels)
 }
 
-// difference returns the findings only b has and those only a has, by rule, subject and models.
+// trouble tells findings apart by rule, subject and models.
+type trouble struct {
+	rule               string
+	subject            loading.Key
+	lamp, gear, dimmer loading.Key
+}
+
+func troubleOf(f *retrofit.Finding) trouble {
+	return trouble{f.Rule, f.Subject.Key, f.Lamp, f.Gear, f.Control}
+}
+
+func sameFinding(a, b *retrofit.Finding) bool { return troubleOf(a) == troubleOf(b) }
+
+// difference returns the findings only b has and those only a has.
 func difference(a, b []retrofit.Finding) (opened, cleared []*retrofit.Finding) {
-	type key struct {
-		rule               string
-		subject            loading.Key
-		lamp, gear, dimmer loading.Key
-	}
-	of := func(f *retrofit.Finding) key { return key{f.Rule, f.Subject.Key, f.Lamp, f.Gear, f.Control} }
-	had, has := map[key]bool{}, map[key]bool{}
+	had, has := map[trouble]bool{}, map[trouble]bool{}
 	for i := range a {
-		had[of(&a[i])] = true
+		had[troubleOf(&a[i])] = true
 	}
 	for i := range b {
-		has[of(&b[i])] = true
-		if !had[of(&b[i])] {
+		has[troubleOf(&b[i])] = true
+		if !had[troubleOf(&b[i])] {
 			opened = append(opened, &b[i])
 		}
 	}
 	for i := range a {
-		if !has[of(&a[i])] {
+		if !has[troubleOf(&a[i])] {
 			cleared = append(cleared, &a[i])
 		}
 	}
@@ -271,7 +285,7 @@ func (t *trial) apply(cat *plant.Catalogue, sys *loading.System, p *Proposal, ye
 		if p.FromDriverModelID != nil && (d.Model == nil || d.Model.Key != keyOfDriver(cat, *p.FromDriverModelID)) {
 			continue
 		}
-		d.Model, d.Proposed = &cat.Drivers[*p.DriverModelID].Gear, true
+		refit(d, &cat.Drivers[*p.DriverModelID].Gear)
 		changed[d.Key] = true
 		t.out.Places++
 	}
@@ -298,6 +312,10 @@ func keyOfDriver(cat *plant.Catalogue, id domain.ID) loading.Key {
 func (t *trial) relampAll(cat *plant.Catalogue, f *loading.Fixture, p *Proposal, yearly *float64, changed map[loading.Key]bool) {
 	lamp := &cat.Lamps[*p.LampModelID].Lamp
 	n := 0
+	if len(f.Lamps) == 0 && p.FromLampModelID == nil && p.PlaceIDs != nil {
+		// Nobody looked what is in it: the one lamp proposed is judged, the others are asked for.
+		f.Lamps = []loading.LampGroup{{Count: 1}}
+	}
 	for i := range f.Lamps {
 		g := &f.Lamps[i]
 		if p.FromLampModelID != nil && (g.Model == nil || g.Model.Key != (&builder{cat: cat}).keyOf(*p.FromLampModelID)) {

@@ -159,17 +159,8 @@ func orNil(id domain.ID) *domain.ID {
 // Waive lets findings be until the end of a day, for a reason: those named, or every open one of a cause.
 func Waive(ctx context.Context, s domain.Scope, ids []domain.ID, cause *Cause, why string, until domain.Date) ([]Waiver, error) {
 	c := domain.NewCheck("waiver")
-	c.Text("/why", why)
-	if why == "" {
-		c.Add("/why", "must say why")
-	}
-	day, err := Today(ctx, s)
-	if err != nil {
+	if err := checkWaiver(ctx, s, c, "", why, until); err != nil {
 		return nil, err
-	}
-	c.Date("/until", &until)
-	if until < day {
-		c.Add("/until", "must not lie in the past")
 	}
 	if (len(ids) == 0) == (cause == nil) {
 		c.Add("/findings", "must name findings, or cause must be given: one of the two")
@@ -190,6 +181,43 @@ func Waive(ctx context.Context, s domain.Scope, ids []domain.ID, cause *Cause, w
 	if len(list) == 0 || cause == nil && len(list) < len(ids) {
 		return nil, domain.NotFoundf("%d of the findings named are not open in this building", max(len(ids)-len(list), 1))
 	}
+	return waive(ctx, s, list, why, until)
+}
+
+// Override lets a refused proposal pass, for a reason and until the end of a day: what it is refused for is waived ahead,
+// so that its findings open waived once it is fitted as proposed. Fields of a bad override are named under at.
+func Override(ctx context.Context, s domain.Scope, w *WhatIf, at, why string, until domain.Date) error {
+	c := domain.NewCheck("override")
+	if err := checkWaiver(ctx, s, c, at, why, until); err != nil {
+		return err
+	}
+	if err := c.Err(); err != nil {
+		return err
+	}
+	var err error
+	w.Waivers, err = waive(ctx, s, w.refusing, why, until)
+	return err
+}
+
+// checkWaiver adds what is wrong with a waiver's reason and date.
+func checkWaiver(ctx context.Context, s domain.Scope, c *domain.Check, at, why string, until domain.Date) error {
+	c.Text(at+"/why", why)
+	if why == "" {
+		c.Add(at+"/why", "must say why")
+	}
+	day, err := Today(ctx, s)
+	if err != nil {
+		return err
+	}
+	c.Date(at+"/until", &until)
+	if until < day {
+		c.Add(at+"/until", "must not lie in the past")
+	}
+	return nil
+}
+
+// waive stores a waiver for each finding.
+func waive(ctx context.Context, s domain.Scope, list []Finding, why string, until domain.Date) ([]Waiver, error) {
 	out := make([]Waiver, len(list))
 	for i := range list {
 		f := &list[i]
@@ -197,7 +225,11 @@ func Waive(ctx context.Context, s domain.Scope, ids []domain.ID, cause *Cause, w
 		w.ID, w.BuildingID, w.Version, w.CreatedAt, w.UpdatedAt = domain.NewID(), s.Building, 1, s.At, s.At
 		w.Rule, w.RuleSet, w.SubjectKind, w.SubjectID, w.InputHash = f.Rule, f.RuleSet, f.SubjectKind, f.SubjectID, f.InputHash
 		w.Why, w.Until, w.ByKind, w.ByID, w.InEffect = why, until, s.By.Kind, s.By.ID, true
-		event.Record(s, event.Act{Action: "finding.waived", Kind: "finding", ID: f.ID, Body: w})
+		act := event.Act{Action: "finding.waived", Kind: "finding", ID: f.ID, Body: w}
+		if f.ID.IsZero() { // not recorded yet: waived ahead
+			act.Kind, act.ID = f.SubjectKind, f.SubjectID
+		}
+		event.Record(s, act)
 	}
 	return out, Waivers.Copy(ctx, s, len(out), func(i int) *Waiver { return &out[i] })
 }
