@@ -19,9 +19,10 @@ type street struct {
 	*yard
 	records map[domain.ID]map[string]string // building, path parameter, identifier
 	shared  map[string]string               // those of the catalogue and the estate
+	first   string                          // the key of the first administrator
 }
 
-func newStreet(t *testing.T) *street {
+func newStreet(t testing.TB) *street {
 	t.Helper()
 	y := newYard(t, func(o *Options) { o.Authenticator = NewKeys(o.Pool, o.Clock, o.Log) })
 	var first string
@@ -33,7 +34,7 @@ func newStreet(t *testing.T) *street {
 		t.Fatal(err)
 	}
 	y.Client = y.As(first)
-	st := &street{yard: y, records: map[domain.ID]map[string]string{}}
+	st := &street{yard: y, records: map[domain.ID]map[string]string{}, first: first}
 	for _, b := range []domain.ID{buildingA, buildingB} {
 		st.records[b] = st.furnish(t, "/v1/buildings/"+b.String(), "1")
 	}
@@ -57,7 +58,7 @@ func newStreet(t *testing.T) *street {
 
 // furnish records one of everything in a building: a dimmed electronic transformer (35 to 105 W) that feeds a halogen lamp
 // swapped for a 7 W LED, so that there are findings. n, a digit, tells the records of several calls apart.
-func (s *street) furnish(t *testing.T, at, n string) map[string]string {
+func (s *street) furnish(t testing.TB, at, n string) map[string]string {
 	t.Helper()
 	post := func(path string, body map[string]any) map[string]any {
 		t.Helper()

@@ -219,7 +219,7 @@ CREATE TABLE place (
 );
 
 CREATE UNIQUE INDEX place_tag_key ON place (building_id, tag) WHERE retired_at IS NULL;
-CREATE INDEX place_tree_idx ON place (building_id, tree_id);
+CREATE INDEX place_tree_idx ON place (building_id, tree_id, kind);
 CREATE INDEX place_space_idx ON place (building_id, space_id);
 CREATE INDEX place_fed_by_idx ON place (building_id, fed_by_place_id) WHERE fed_by_place_id IS NOT NULL;
 

@@ -9,6 +9,7 @@ import (
 	"log/slog"
 	"os"
 	"os/signal"
+	"runtime/debug"
 	"syscall"
 	"time"
 
@@ -47,7 +48,17 @@ type exit int
 
 func (e exit) Error() string { return fmt.Sprintf("exit status %d", int(e)) }
 
-func main() { os.Exit(run(os.Args[1:], os.Stdin, os.Stdout, os.Stderr)) }
+// main also has garbage collected less often while memory is plenty, since a full review forgets at once what it read:
+// GOGC and GOMEMLIMIT, where set, decide instead.
+func main() {
+	if os.Getenv("GOGC") == "" {
+		debug.SetGCPercent(400)
+	}
+	if os.Getenv("GOMEMLIMIT") == "" {
+		debug.SetMemoryLimit(384 << 20)
+	}
+	os.Exit(run(os.Args[1:], os.Stdin, os.Stdout, os.Stderr))
+}
 
 // run is the program without its end: it returns the exit status. 0 is well, 1 is told per command, 2 is a use or an
 // input that cannot be.

@@ -13,7 +13,7 @@ import (
 )
 
 // chunkPlaces is about how many places one transaction of a full review holds, so that crews wait little.
-const chunkPlaces = 500
+const chunkPlaces = 2000
 
 // Tally sums what a review did.
 type Tally struct {

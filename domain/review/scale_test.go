@@ -1,6 +1,7 @@
 package review_test
 
 import (
+	"bytes"
 	"context"
 	"flag"
 	"fmt"
@@ -26,33 +27,7 @@ func estate(b *testing.B, db *pgxpool.Pool, r *review.Reviewer, n int) (building
 	for at := 0; at < n; at += each {
 		home := domaintest.Building(b, db, fmt.Sprintf("B%d", at/each))
 		buildings = append(buildings, home.ID)
-		var bulk plant.Bulk
-		for i := 0; i < each; i += 4 {
-			if i%20 == 0 {
-				k := plant.Circuit{Board: fmt.Sprint("DB", i/200), Way: fmt.Sprint(i / 20)}
-				k.ID, k.Curve, k.RatingA, k.RCD, k.Neutral = domain.NewID(), "C", domaintest.Of(16.0), "none", "own"
-				bulk.Circuits = append(bulk.Circuits, k)
-			}
-			circuit := bulk.Circuits[len(bulk.Circuits)-1].ID
-			lamp, d := m.Halogen35.ID, plant.Driver{DriverModelID: &m.Wound100.ID}
-			d.ID, d.Tag, d.FedByCircuitID = domain.NewID(), fmt.Sprint("G", i), &circuit
-			if i%80 == 0 {
-				d.DriverModelID, lamp = &m.Electronic105.ID, m.LED7.ID
-			}
-			bulk.Drivers = append(bulk.Drivers, d)
-			count := 4
-			if i%80 != 0 {
-				count = 2 // 70 W of halogen lamps in all: under the rating
-			}
-			for j := range 4 {
-				f := plant.Fixture{FixtureModelID: &m.Downlight.ID, LampModelID: &lamp, LampCount: domaintest.Of(0)}
-				if j < count {
-					f.LampCount = domaintest.Of(1)
-				}
-				f.Tag, f.FedByPlaceID = fmt.Sprintf("L%d-%d", i, j), &d.ID
-				bulk.Fixtures = append(bulk.Fixtures, f)
-			}
-		}
+		bulk := luminaires(&m, each)
 		err := domain.In(ctx, db, home.ID, domaintest.Tester, domaintest.Noon, func(s domain.Scope) error {
 			_, err := r.Change(ctx, s, review.Touch{}, func(e *plant.Edit) error {
 				_, err := e.Upsert(ctx, &bulk)
@@ -68,6 +43,38 @@ func estate(b *testing.B, db *pgxpool.Pool, r *review.Reviewer, n int) (building
 		b.Fatal(err)
 	}
 	return buildings
+}
+
+// luminaires are the records of n luminaires with their transformers and circuits.
+func luminaires(m *domaintest.Models, n int) plant.Bulk {
+	var bulk plant.Bulk
+	for i := 0; i < n; i += 4 {
+		if i%20 == 0 {
+			k := plant.Circuit{Board: fmt.Sprint("DB", i/200), Way: fmt.Sprint(i / 20)}
+			k.ID, k.Curve, k.RatingA, k.RCD, k.Neutral = domain.NewID(), "C", domaintest.Of(16.0), "none", "own"
+			bulk.Circuits = append(bulk.Circuits, k)
+		}
+		circuit := bulk.Circuits[len(bulk.Circuits)-1].ID
+		lamp, d := m.Halogen35.ID, plant.Driver{DriverModelID: &m.Wound100.ID}
+		d.ID, d.Tag, d.FedByCircuitID = domain.NewID(), fmt.Sprint("G", i), &circuit
+		if i%80 == 0 {
+			d.DriverModelID, lamp = &m.Electronic105.ID, m.LED7.ID
+		}
+		bulk.Drivers = append(bulk.Drivers, d)
+		count := 4
+		if i%80 != 0 {
+			count = 2 // 70 W of halogen lamps in all: under the rating
+		}
+		for j := range 4 {
+			f := plant.Fixture{FixtureModelID: &m.Downlight.ID, LampModelID: &lamp, LampCount: domaintest.Of(0)}
+			if j < count {
+				f.LampCount = domaintest.Of(1)
+			}
+			f.Tag, f.FedByPlaceID = fmt.Sprintf("L%d-%d", i, j), &d.ID
+			bulk.Fixtures = append(bulk.Fixtures, f)
+		}
+	}
+	return bulk
 }
 
 // fixtures sizes the estates of the benchmarks here: go test ./domain/review -bench . -args -fixtures 1000000
@@ -107,4 +114,72 @@ func BenchmarkFullReview(b *testing.B) {
 	b.ReportMetric(reviewed.Seconds()/copied.Seconds(), "x/copy")
 	b.ReportMetric(reviewed.Seconds()/float64(b.N), "s/review")
 	b.ReportMetric(copied.Seconds()/float64(b.N), "s/copy")
+}
+
+// BenchmarkBulk measures requests of 10,000 rows, with and without review and audit, against COPY FROM STDIN of the same
+// rows into the same tables, with their indexes and constraints.
+func BenchmarkBulk(b *testing.B) {
+	ctx := context.Background()
+	db := domaintest.DB(b)
+	m := domaintest.Catalogue(b, db)
+	r := review.New()
+	var rows int
+	var took [3]time.Duration
+	store := func(code string, put func(domain.Scope, *plant.Bulk) error) time.Duration {
+		bulk := luminaires(&m, 7690) // 10,000 rows with what feeds them
+		rows = bulk.Rows()
+		home := domaintest.Building(b, db, code)
+		start := time.Now()
+		if err := domain.In(ctx, db, home.ID, domaintest.Tester, domaintest.Noon, func(s domain.Scope) error { return put(s, &bulk) }); err != nil {
+			b.Fatal(err)
+		}
+		return time.Since(start)
+	}
+	conn, err := db.Acquire(ctx)
+	if err != nil {
+		b.Fatal(err)
+	}
+	defer conn.Release()
+	pg := conn.Conn().PgConn()
+	for n := 0; b.Loop(); n++ {
+		took[0] += store(fmt.Sprint("R", n), func(s domain.Scope, bulk *plant.Bulk) error {
+			_, err := r.Change(ctx, s, review.Touch{}, func(e *plant.Edit) error {
+				_, err := e.Upsert(ctx, bulk)
+				return err
+			})
+			return err
+		})
+		took[1] += store(fmt.Sprint("U", n), func(s domain.Scope, bulk *plant.Bulk) error {
+			e := plant.NewEdit(s, nil)
+			e.Quiet()
+			_, err := e.Upsert(ctx, bulk)
+			return err
+		})
+		// The rows of that building go out and in again.
+		var id domain.ID
+		if err := db.QueryRow(ctx, `SELECT id FROM building WHERE code = $1`, fmt.Sprint("U", n)).Scan(&id); err != nil {
+			b.Fatal(err)
+		}
+		var text [2]bytes.Buffer
+		for i, table := range []string{"circuit", "place"} {
+			if _, err := pg.CopyTo(ctx, &text[i], `COPY (SELECT * FROM `+table+` WHERE building_id = '`+id.String()+`') TO STDOUT`); err != nil {
+				b.Fatal(err)
+			}
+		}
+		for _, table := range []string{"place", "circuit"} {
+			if _, err := db.Exec(ctx, `DELETE FROM `+table+` WHERE building_id = $1`, id); err != nil {
+				b.Fatal(err)
+			}
+		}
+		start := time.Now()
+		for i, table := range []string{"circuit", "place"} {
+			if _, err := pg.CopyFrom(ctx, &text[i], `COPY `+table+` FROM STDIN`); err != nil {
+				b.Fatal(err)
+			}
+		}
+		took[2] += time.Since(start)
+	}
+	b.ReportMetric(took[2].Seconds()/took[0].Seconds(), "of-copy")
+	b.ReportMetric(took[2].Seconds()/took[1].Seconds(), "of-copy-unreviewed")
+	b.ReportMetric(float64(rows*b.N)/took[0].Seconds(), "rows/s")
 }
