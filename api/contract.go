@@ -62,7 +62,10 @@ func newDocsPage() docsPage {
 		sum := sha256.Sum256(m[1])
 		policy += " 'sha256-" + base64.StdEncoding.EncodeToString(sum[:]) + "'"
 	}
-	return docsPage{html: w.b.Bytes(), policy: policy, assets: h}
+	// On a phone a wide table scrolls by itself, not the page.
+	html := bytes.Replace(w.b.Bytes(), []byte("</head>"),
+		[]byte("<style>.markdown table{display:block;overflow-x:auto}.markdown td,.markdown th{padding-right:1em!important}</style></head>"), 1)
+	return docsPage{html: html, policy: policy, assets: h}
 }
 
 // docs answers GET /docs: openapi.yaml as a page.

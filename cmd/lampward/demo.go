@@ -130,7 +130,8 @@ func (s *streams) summary(ctx context.Context, db *opened, r *review.Reviewer, s
 			fmt.Fprintf(s.out, "\n... and %d causes more: GET /v1/causes\n", len(groups)-i)
 			break
 		}
-		fmt.Fprintf(s.out, "\n%d. %s, %d places in %d buildings, %d lamps [%s]\n   %s\n", i+1, strings.ToUpper(g.Severity), g.Places, g.Buildings, g.Lamps, g.Rule, g.Sentence)
+		fmt.Fprintf(s.out, "\n%d. %s, %s in %s, %s [%s]\n   %s\n", i+1, strings.ToUpper(g.Severity), counted(g.Places, "place"),
+			counted(g.Buildings, "building"), counted(g.Lamps, "lamp"), g.Rule, g.Sentence)
 		steps, err := review.StepsOf(ctx, db.pool, g.Cause)
 		if err != nil {
 			return err

@@ -37,3 +37,11 @@ func (s *streams) progress(what string) func(done, total int) {
 		}
 	}
 }
+
+// counted writes a number and what it counts: "1 place", "3 places".
+func counted(n int, what string) string {
+	if n != 1 {
+		what += "s"
+	}
+	return fmt.Sprintf("%d %s", n, what)
+}
