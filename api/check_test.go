@@ -237,6 +237,13 @@ func TestFitCheck(t *testing.T) {
 	if no["answer"] != "do_not_fit" || no["sum"] == "" || len(no["findings"].([]any)) == 0 {
 		t.Errorf("answer %v", no)
 	}
+	if no["options"] != nil {
+		t.Errorf("options nobody asked for: %v", no["options"])
+	}
+	named := map[string]any{"lamp_model_id": y.models.LED7.ID.String(), "driver_model_id": y.models.Electronic105.ID.String(), "lamps": 3, "dimmer_none": true, "options": true}
+	if got, _ := crew.Post("/v1/fit-check", named).Want(200).Object()["options"].([]any); len(got) == 0 {
+		t.Error("a refusal names nothing that would do")
+	}
 	halogen := map[string]any{"gear": ask["gear"], "lamp": map[string]any{"name": "", "technology": "halogen", "supply": "elv_ac_dc", "power_w": 35.0, "rated_v": 12.0}, "lamps": 2, "dimmer_none": true,
 		"building_id": buildingA.String()}
 	if yes := crew.Post("/v1/fit-check", halogen).Want(200).Object(); yes["answer"] == "do_not_fit" {
