@@ -2,6 +2,7 @@ package api
 
 import (
 	"net/http"
+	"slices"
 
 	"lampward/domain"
 	"lampward/domain/event"
@@ -25,6 +26,9 @@ func (s *Server) checks() []route {
 		get("/findings/{finding_id}", "getFinding", s.getFinding),
 		get("/causes", "listCauses", s.listCauses),
 		shared("/v1/causes", "listEstateCauses", s.listEstateCauses),
+		shared("/v1/findings", "listEstateFindings", s.listEstateFindings),
+		get("/finding-counts", "countFindings", s.countFindings),
+		shared("/v1/finding-counts", "countEstateFindings", s.countEstateFindings),
 		get("/questions", "listQuestions", s.listQuestions),
 		get("/waivers", "listWaivers", s.listWaivers),
 		route{Method: http.MethodPost, Path: inBuilding + "/waivers", Op: "waiveFindings", Right: plan, Scope: building, Takes: []string{jsonMedia}, Handle: s.waiveFindings},
@@ -42,25 +46,63 @@ func (s *Server) checks() []route {
 	)
 }
 
-func (s *Server) listFindings(c *call) (reply, error) {
-	q, err := c.paged([]filter{{Name: "severity", Words: review.Severities()}, {Name: "rule"}, {Name: "sureness", Words: review.Surenesses()},
-		{Name: "subject_id", Kind: idFilter}, {Name: "space_id", Kind: idFilter}, {Name: "lamp_model_id", Kind: idFilter},
-		{Name: "driver_model_id", Kind: idFilter}, {Name: "dimmer_model_id", Kind: idFilter}, {Name: "cleared", Kind: boolFilter}, {Name: "waived", Kind: boolFilter}}, true)
+// ofFindings are the filters of every list of findings.
+var ofFindings = []filter{{Name: "severity", Words: review.Severities()}, {Name: "rule"}, {Name: "sureness", Words: review.Surenesses()},
+	{Name: "subject_kind", Words: review.SubjectKinds()}, {Name: "lamp_model_id", Kind: idFilter}, {Name: "driver_model_id", Kind: idFilter},
+	{Name: "dimmer_model_id", Kind: idFilter}, {Name: "cleared", Kind: boolFilter}, {Name: "waived", Kind: boolFilter}, {Name: "sort", Words: []string{"worst", "newest"}}}
+
+func findingsAsked(c *call, more ...filter) (asked, review.Filter, error) {
+	q, err := c.paged(slices.Concat(ofFindings, more), true)
 	if err != nil {
-		return reply{}, err
+		return q, review.Filter{}, err
 	}
 	f := review.Filter{Severity: value[string](q, "severity"), Rule: value[string](q, "rule"), Sureness: value[string](q, "sureness"),
-		Subject: value[domain.ID](q, "subject_id"), Space: value[domain.ID](q, "space_id"), Lamp: value[domain.ID](q, "lamp_model_id"),
-		Driver: value[domain.ID](q, "driver_model_id"), Dimmer: value[domain.ID](q, "dimmer_model_id"), Cleared: value[bool](q, "cleared")}
+		Kind: value[string](q, "subject_kind"), Subject: value[domain.ID](q, "subject_id"), Space: value[domain.ID](q, "space_id"),
+		Lamp: value[domain.ID](q, "lamp_model_id"), Driver: value[domain.ID](q, "driver_model_id"), Dimmer: value[domain.ID](q, "dimmer_model_id"),
+		Cleared: value[bool](q, "cleared"), Newest: value[string](q, "sort") == "newest"}
 	if _, given := q.values["waived"]; given {
 		w := value[bool](q, "waived")
 		f.Waived = &w
+	}
+	return q, f, nil
+}
+
+func (s *Server) listFindings(c *call) (reply, error) {
+	q, f, err := findingsAsked(c, filter{Name: "subject_id", Kind: idFilter}, filter{Name: "space_id", Kind: idFilter})
+	if err != nil {
+		return reply{}, err
 	}
 	list, next, err := review.List(c.ctx, c.read(), f, q.page)
 	if err != nil {
 		return reply{}, err
 	}
 	return c.page(list, next, q), nil
+}
+
+func (s *Server) listEstateFindings(c *call) (reply, error) {
+	q, f, err := findingsAsked(c)
+	if err != nil {
+		return reply{}, err
+	}
+	list, next, err := review.ListEverywhere(c.ctx, s.opt.Pool, f, c.at, c.readable(), q.page)
+	if err != nil {
+		return reply{}, err
+	}
+	return c.page(list, next, q), nil
+}
+
+func (s *Server) countFindings(c *call) (reply, error) {
+	return s.ruleCounts(c, []domain.ID{c.building})
+}
+
+func (s *Server) countEstateFindings(c *call) (reply, error) { return s.ruleCounts(c, c.readable()) }
+
+func (s *Server) ruleCounts(c *call, buildings []domain.ID) (reply, error) {
+	if err := c.noQuery(); err != nil {
+		return reply{}, err
+	}
+	list, err := review.RuleCounts(c.ctx, s.opt.Pool, c.at, buildings)
+	return reply{body: map[string]any{"items": list}}, err
 }
 
 func (s *Server) getFinding(c *call) (reply, error) {
@@ -92,7 +134,7 @@ func (s *Server) listEstateCauses(c *call) (reply, error) {
 	if err != nil {
 		return reply{}, err
 	}
-	list, err := review.GroupsEverywhere(c.ctx, s.opt.Pool, cat, c.readable())
+	list, err := review.GroupsEverywhere(c.ctx, s.opt.Pool, cat, c.at, c.readable())
 	return reply{body: map[string]any{"items": list}}, err
 }
 

@@ -74,6 +74,49 @@ func TestFindings(t *testing.T) {
 	}
 	y.Get(atA + "/findings?severity=awful").Want(422)
 
+	// Over all buildings, by kind of subject, the newest first, counted by rule.
+	for kind, want := range map[string]int{"driver": len(list), "circuit": 0} {
+		if got := y.Get(atA + "/findings?subject_kind=" + kind).Want(200).Object()["items"].([]any); len(got) != want {
+			t.Errorf("%d of %d are about a %s", len(got), len(list), kind)
+		}
+	}
+	all := y.As("all").Get("/v1/findings?sort=newest").Want(200).Object()["items"].([]any)
+	if len(all) != len(list) {
+		t.Errorf("%d findings in all buildings, %d in the only one with any", len(all), len(list))
+	}
+	for i := 1; i < len(all); i++ {
+		if a, b := all[i-1].(map[string]any), all[i].(map[string]any); a["opened_at"].(string) < b["opened_at"].(string) {
+			t.Errorf("%s before %s", a["opened_at"], b["opened_at"])
+		}
+	}
+	for _, order := range []string{"worst", "newest"} {
+		seen := map[string]bool{}
+		for next := "/v1/findings?limit=1&sort=" + order; next != ""; {
+			a := y.As("all").Get(next).Want(200)
+			for _, f := range a.Object()["items"].([]any) {
+				seen[f.(map[string]any)["id"].(string)] = true
+			}
+			next = strings.TrimSuffix(strings.TrimPrefix(a.Header.Get("Link"), "<"), `>; rel="next"`)
+		}
+		if len(seen) != len(list) {
+			t.Errorf("%d findings page by page, the %s first, %d at once", len(seen), order, len(list))
+		}
+	}
+	y.Get("/v1/findings?sort=odd").Want(422)
+	sum := func(at string) (n, waived int) {
+		for _, r := range y.Get(at).Want(200).Object()["items"].([]any) {
+			n += int(r.(map[string]any)["findings"].(float64))
+			waived += int(r.(map[string]any)["waived"].(float64))
+		}
+		return n, waived
+	}
+	for _, at := range []string{atA + "/finding-counts", "/v1/finding-counts"} {
+		if n, w := sum(at); n != len(list) || w != 0 {
+			t.Errorf("%s counts %d, %d waived", at, n, w)
+		}
+		y.Get(at + "?x=1").Want(422)
+	}
+
 	// Grouped by cause, here and over all buildings.
 	groups := y.Get(atA + "/causes").Want(200).Object()["items"].([]any)
 	everywhere := y.As("all").Get("/v1/causes").Want(200).Object()["items"].([]any)
@@ -99,6 +142,9 @@ func TestFindings(t *testing.T) {
 	}
 	if got := y.Get(atA + "/findings?waived=true").Want(200).Object()["items"].([]any); len(got) != 1 {
 		t.Errorf("%d waived", len(got))
+	}
+	if _, waived := sum("/v1/finding-counts"); waived != 1 {
+		t.Errorf("%d waived", waived)
 	}
 	if got := y.Get(atA + "/waivers").Want(200).Object()["items"].([]any); len(got) != 1 || got[0].(map[string]any)["in_effect"] != true {
 		t.Errorf("waivers %v", got)
@@ -134,7 +180,7 @@ func TestFindings(t *testing.T) {
 	if got := y.Get(atA + "/review").Want(200).Object(); got["pending"] != false {
 		t.Errorf("nothing is asked for: %v", got)
 	}
-	if got := y.Post(atA+"/review", nil).Want(202).Object(); got["pending"] != true || got["rule_set"] != float64(review.RuleSet) {
+	if got := y.Post(atA+"/review", nil).Want(202).Object(); got["pending"] != true || got["reviews_owed"].(float64) < 1 || got["owed_since"] == nil || got["rule_set"] != float64(review.RuleSet) {
 		t.Errorf("asked for: %v", got)
 	}
 	drain()
@@ -190,6 +236,13 @@ func TestFitCheck(t *testing.T) {
 	no := crew.Post("/v1/fit-check", ask).Want(200).Object()
 	if no["answer"] != "do_not_fit" || no["sum"] == "" || len(no["findings"].([]any)) == 0 {
 		t.Errorf("answer %v", no)
+	}
+	if no["options"] != nil {
+		t.Errorf("options nobody asked for: %v", no["options"])
+	}
+	named := map[string]any{"lamp_model_id": y.models.LED7.ID.String(), "driver_model_id": y.models.Electronic105.ID.String(), "lamps": 3, "dimmer_none": true, "options": true}
+	if got, _ := crew.Post("/v1/fit-check", named).Want(200).Object()["options"].([]any); len(got) == 0 {
+		t.Error("a refusal names nothing that would do")
 	}
 	halogen := map[string]any{"gear": ask["gear"], "lamp": map[string]any{"name": "", "technology": "halogen", "supply": "elv_ac_dc", "power_w": 35.0, "rated_v": 12.0}, "lamps": 2, "dimmer_none": true,
 		"building_id": buildingA.String()}

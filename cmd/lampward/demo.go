@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"strings"
 	"text/tabwriter"
+	"time"
 
 	"lampward/domain"
 	"lampward/domain/review"
@@ -119,7 +120,7 @@ func (s *streams) summary(ctx context.Context, db *opened, r *review.Reviewer, s
 	if err != nil {
 		return err
 	}
-	groups, err := review.GroupsEverywhere(ctx, db.pool, cat, nil)
+	groups, err := review.GroupsEverywhere(ctx, db.pool, cat, time.Now(), nil)
 	if err != nil {
 		return err
 	}

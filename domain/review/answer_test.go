@@ -152,7 +152,7 @@ func TestFitAtPlace(t *testing.T) {
 	x := setup(t)
 	_, d, lights, _ := x.transformer("1", x.m.Electronic105.ID, x.m.Halogen35.ID, 3)
 	ask := func(place, lamp domain.ID) (review.FitAnswer, error) {
-		return x.r.FitAtPlace(context.Background(), x.scope(), &review.FitRequest{BuildingID: &x.b.ID, PlaceID: &place, LampModelID: &lamp})
+		return x.r.FitAtPlace(context.Background(), x.scope(), &review.FitRequest{BuildingID: &x.b.ID, PlaceID: &place, LampModelID: &lamp, Options: true})
 	}
 	x.settle(d.ID, lights)
 	a, err := ask(lights[0].ID, x.m.LED7.ID)
@@ -180,7 +180,7 @@ func TestBareRefusalOffersOptions(t *testing.T) {
 	if err != nil {
 		t.Fatal(err)
 	}
-	q := &review.FitRequest{LampModelID: &x.m.LED7.ID, Lamps: 2, DriverModelID: &x.m.Electronic105.ID, DimmerNone: true}
+	q := &review.FitRequest{LampModelID: &x.m.LED7.ID, Lamps: 2, DriverModelID: &x.m.Electronic105.ID, DimmerNone: true, Options: true}
 	a, err := review.FitCheck(cat, x.b.Supply, q)
 	if err != nil || a.Answer != review.DoesNotFit {
 		t.Fatalf("%+v, %v", a, err)

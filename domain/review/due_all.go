@@ -22,13 +22,6 @@ func Pending(ctx context.Context, db domain.Queryer, now time.Time) (due, rechec
 	return due, rechecks, domain.Classify(err, "review")
 }
 
-// PendingIn reports whether a review of one building is owed.
-func PendingIn(ctx context.Context, db domain.Queryer, building domain.ID) (bool, error) {
-	var owed bool
-	err := db.QueryRow(ctx, `SELECT EXISTS (SELECT FROM review_due WHERE building_id IS NULL OR building_id = $1)`, building).Scan(&owed)
-	return owed, domain.Classify(err, "review")
-}
-
 // owed is one row of review_due.
 type owed struct {
 	ID        domain.ID

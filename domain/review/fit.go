@@ -40,7 +40,8 @@ type FitRequest struct {
 	Fitting        *loading.Fitting `json:"fitting,omitempty"`
 	Supply         *loading.Supply  `json:"supply,omitempty"` // the mains; the building's where absent
 
-	Keep *Keep `json:"keep,omitempty"` // store what was seen as a place
+	Options bool  `json:"options,omitempty"` // look for what would do, where the answer is no
+	Keep    *Keep `json:"keep,omitempty"`    // store what was seen as a place
 }
 
 // Keep says where what was seen is stored. The building is the request's.
@@ -198,7 +199,7 @@ func FitCheck(cat *plant.Catalogue, supply loading.Supply, q *FitRequest) (FitAn
 		}
 	}
 	a := newAnswer(advice, cautionsAt(sys, 0))
-	if a.Answer == DoesNotFit {
+	if q.Options && a.Answer == DoesNotFit {
 		a.Options = bareOptions(cat, sys)
 	}
 	return a, nil
@@ -334,7 +335,7 @@ func (r *Reviewer) FitAtPlace(ctx context.Context, s domain.Scope, q *FitRequest
 	lamp := lampOf(cat, q.LampModelID, q.Lamp)
 	relamp(&after.Fixtures[i], lamp, q.Holder)
 	a := newAnswer(retrofit.Verdict(before, retrofit.Check(after)), cautionsAt(after, i))
-	if a.Answer == DoesNotFit {
+	if q.Options && a.Answer == DoesNotFit {
 		// A place whose lamps nobody could name has no options; the answer stands without them.
 		if a.Options, err = optionsAt(ctx, s, cat, t, *q.PlaceID); domain.KindOf(err) == domain.Conflict {
 			err = nil

@@ -4,6 +4,7 @@ import (
 	"cmp"
 	"context"
 	"slices"
+	"time"
 
 	"lampward/calc/retrofit"
 	"lampward/domain"
@@ -19,22 +20,79 @@ func sortGroups(gs []Group) {
 	})
 }
 
-// GroupsEverywhere returns the open findings of all buildings by cause, of those named where buildings is not nil.
-func GroupsEverywhere(ctx context.Context, db domain.Queryer, cat *plant.Catalogue, buildings []domain.ID) ([]Group, error) {
-	var only any
-	if buildings != nil {
-		only = domain.IDs(buildings)
+// waivedHere tells whether a waiver lets finding f be on the day it is, at time $2, in its building b.
+var waivedHere = waivedOn("f.building_id", "($2::timestamptz AT TIME ZONE b.time_zone)::date")
+
+// those are the buildings named, as an argument of a query that takes all where it is NULL.
+func those(buildings []domain.ID) any {
+	if buildings == nil {
+		return nil
 	}
+	return domain.IDs(buildings)
+}
+
+// GroupsEverywhere returns the findings of all buildings that are open at a time by cause, of those named where buildings
+// is not nil.
+func GroupsEverywhere(ctx context.Context, db domain.Queryer, cat *plant.Catalogue, at time.Time, buildings []domain.ID) ([]Group, error) {
 	rows, err := db.Query(ctx, `
 		SELECT f.rule, f.lamp_model_id, f.driver_model_id, f.dimmer_model_id, max(`+rankSQL+`), bool_or(f.blocks), count(*), sum(f.lamps),
-		       count(DISTINCT f.building_id), 0, min(f.opened_at), (array_agg(f.sentence ORDER BY f.lamps DESC, f.id))[1]
+		       count(DISTINCT f.building_id), count(*) FILTER (WHERE `+waivedHere+`), min(f.opened_at), (array_agg(f.sentence ORDER BY f.lamps DESC, f.id))[1]
 		  FROM finding f
+		  JOIN building b ON b.id = f.building_id
 		 WHERE f.cleared_at IS NULL AND ($1::uuid[] IS NULL OR f.building_id = ANY($1))
-		 GROUP BY f.rule, f.lamp_model_id, f.driver_model_id, f.dimmer_model_id`, only)
+		 GROUP BY f.rule, f.lamp_model_id, f.driver_model_id, f.dimmer_model_id`, those(buildings), at)
 	if err != nil {
 		return nil, domain.Classify(err, "finding")
 	}
 	return collectGroups(rows, cat)
+}
+
+// ListEverywhere returns findings of all buildings, of those named where buildings is not nil, in the order of List, at
+// most page.Limit of them after the page's cursor, and the cursor of the next page. Whether each is waived is asked of
+// its building.
+func ListEverywhere(ctx context.Context, db domain.Queryer, f Filter, at time.Time, buildings []domain.ID, page domain.Page) ([]Finding, string, error) {
+	return list(ctx, db, f, page, `
+		  JOIN building b ON b.id = f.building_id
+		 WHERE ($1::uuid[] IS NULL OR f.building_id = ANY($1))
+		   AND ($3::boolean IS NULL OR $3 = `+waivedHere+`)`, those(buildings), at, f.Waived)
+}
+
+// A RuleCount is how many findings of a rule are open.
+type RuleCount struct {
+	Rule      string `json:"rule"`
+	Severity  string `json:"severity"` // the worst
+	Blocks    bool   `json:"blocks"`
+	Findings  int    `json:"findings"`
+	Waived    int    `json:"waived"` // of the findings
+	Lamps     int    `json:"lamps"`
+	Buildings int    `json:"buildings"`
+}
+
+// RuleCounts returns how many findings are open at a time by rule, in the buildings named or in all where buildings is nil:
+// the worst severity first, then the most findings.
+func RuleCounts(ctx context.Context, db domain.Queryer, at time.Time, buildings []domain.ID) ([]RuleCount, error) {
+	rows, err := db.Query(ctx, `
+		SELECT f.rule, max(`+rankSQL+`) AS rank, bool_or(f.blocks), count(*) AS n, count(*) FILTER (WHERE `+waivedHere+`), sum(f.lamps), count(DISTINCT f.building_id)
+		  FROM finding f
+		  JOIN building b ON b.id = f.building_id
+		 WHERE f.cleared_at IS NULL AND ($1::uuid[] IS NULL OR f.building_id = ANY($1))
+		 GROUP BY f.rule
+		 ORDER BY rank DESC, n DESC, f.rule`, those(buildings), at)
+	if err != nil {
+		return nil, domain.Classify(err, "finding")
+	}
+	defer rows.Close()
+	out := []RuleCount{}
+	for rows.Next() {
+		var c RuleCount
+		var rank int
+		if err := rows.Scan(&c.Rule, &rank, &c.Blocks, &c.Findings, &c.Waived, &c.Lamps, &c.Buildings); err != nil {
+			return nil, domain.Classify(err, "finding")
+		}
+		c.Severity = severityOf(rank)
+		out = append(out, c)
+	}
+	return out, domain.Classify(rows.Err(), "finding")
 }
 
 // A Summary is a building's state on one line.
@@ -53,10 +111,6 @@ type Summary struct {
 // Summaries returns the state of every building in use, of those named where buildings is not nil, in the order of
 // their codes.
 func Summaries(ctx context.Context, db domain.Queryer, buildings []domain.ID) ([]Summary, error) {
-	var only any
-	if buildings != nil {
-		only = domain.IDs(buildings)
-	}
 	rows, err := db.Query(ctx, `
 		SELECT b.id, b.code, b.name,
 		       (SELECT coalesce(jsonb_object_agg(severity, n), '{}') FROM (SELECT severity, count(*) AS n FROM finding f
@@ -67,7 +121,7 @@ func Summaries(ctx context.Context, db domain.Queryer, buildings []domain.ID) ([
 		  FROM building b
 		  LEFT JOIN (SELECT building_id, sum(places) AS places, sum(known) AS known FROM tree GROUP BY building_id) AS t ON t.building_id = b.id
 		 WHERE b.retired_at IS NULL AND ($1::uuid[] IS NULL OR b.id = ANY($1))
-		 ORDER BY b.code`, only)
+		 ORDER BY b.code`, those(buildings))
 	if err != nil {
 		return nil, domain.Classify(err, "building")
 	}

@@ -17,12 +17,11 @@ import (
 // optionYears is the horizon over which options are ranked.
 const optionYears = 10
 
-// mostOptions is how many options are returned; mostCombinations how many are looked at at a place on record.
+// mostOptions is how many options are returned; mostCombinations how many are looked at.
 const (
-	mostOptions      = 20
-	mostCombinations = 20_000
-	// Off the ladder the answer has to come in a millisecond.
-	mostBareCombinations = 200
+	mostOptions          = 20
+	mostCombinations     = 20_000
+	mostBareCombinations = 2_000 // off the ladder somebody waits: about 50 ms
 )
 
 // An Option is a combination that may safely be fitted at a place and on all that hangs on its gear: nothing above low
@@ -104,7 +103,11 @@ func bareOptions(cat *plant.Catalogue, sys *loading.System) []Option {
 	}
 	o := &optioner{cat: cat, most: mostBareCombinations, sys: sys, driver: sys.Fixtures[0].Driver}
 	out := o.ranked(cap)
-	return out[:min(len(out), mostOptions)]
+	out = out[:min(len(out), mostOptions)]
+	for i := range out {
+		out[i].CostUnknown = "the hours a year and the energy rate of a place on record"
+	}
+	return out
 }
 
 // ranked searches and puts the cheapest first.

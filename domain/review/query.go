@@ -18,18 +18,22 @@ type Filter struct {
 	Subject                  domain.ID
 	Space                    domain.ID
 	Lamp, Driver, Dimmer     domain.ID
-	Cleared                  bool  // those that cleared, instead of those that are open
-	Waived                   *bool // only those that a waiver lets be, or only those none does
+	Kind                     string // of the subject
+	Newest                   bool   // the newest first, instead of the worst
+	Cleared                  bool   // those that cleared, instead of those that are open
+	Waived                   *bool  // only those that a waiver lets be, or only those none does
 }
 
 // rankSQL orders severities as retrofit.Severity does.
 const rankSQL = `CASE f.severity WHEN 'danger' THEN 4 WHEN 'high' THEN 3 WHEN 'medium' THEN 2 ELSE 1 END`
 
-// waivedSQL tells whether a waiver in effect on day $2 lets finding f be.
-const waivedSQL = `EXISTS (
+// waivedOn tells whether a waiver lets finding f be: of a building, in effect on a day, both as SQL says them.
+func waivedOn(building, day string) string {
+	return `EXISTS (
 		SELECT FROM waiver w
-		 WHERE w.building_id = $1 AND w.subject_id = f.subject_id AND w.rule = f.rule AND w.input_hash = f.input_hash
-		   AND w.retired_at IS NULL AND w.until >= $2 AND w.rule_set >= f.rule_set)`
+		 WHERE w.building_id = ` + building + ` AND w.subject_id = f.subject_id AND w.rule = f.rule AND w.input_hash = f.input_hash
+		   AND w.retired_at IS NULL AND w.until >= ` + day + ` AND w.rule_set >= f.rule_set)`
+}
 
 // List returns findings of s's building, the worst first: by severity, then lamps affected, then age; at most
 // page.Limit of them after the page's cursor, and the cursor of the next page.
@@ -38,50 +42,65 @@ func List(ctx context.Context, s domain.Scope, f Filter, page domain.Page) ([]Fi
 	if err != nil {
 		return nil, "", err
 	}
+	out, next, err := list(ctx, s, f, page, `
+		 WHERE f.building_id = $1
+		   AND ($2::boolean IS NULL OR $2 = `+waivedOn("$1", "$3::date")+`)`, s.Building, f.Waived, day)
+	if err != nil {
+		return nil, "", err
+	}
+	return out, next, withWaivers(ctx, s, out, day)
+}
+
+// list returns findings narrowed by a filter and a WHERE clause of three arguments.
+func list(ctx context.Context, db domain.Queryer, f Filter, page domain.Page, where string, one, two, three any) ([]Finding, string, error) {
 	rank, lamps, opened, last := 5, 0, time.Time{}, domain.ID{}
+	order := rankSQL + ` DESC, f.lamps DESC, f.opened_at, f.id`
+	after := `(` + rankSQL + `, f.lamps) <= ($14, $15) AND ((` + rankSQL + `, f.lamps) < ($14, $15) OR (f.opened_at, f.id) > ($16, $17))`
+	if f.Newest {
+		order = `f.opened_at DESC, f.id DESC`
+		after = `($14::int, $15::int) IS NOT NULL AND (f.opened_at, f.id) < ($16, $17)`
+		opened, last = time.Date(9999, 1, 1, 0, 0, 0, 0, time.UTC), domain.ID{255, 255, 255, 255, 255, 255, 255, 255, 255, 255, 255, 255, 255, 255, 255, 255}
+	}
 	if page.Cursor != "" {
 		if err := domain.DecodeCursor(page.Cursor, &rank, &lamps, &opened, &last); err != nil {
 			return nil, "", err
 		}
 	}
-	rows, err := s.Query(ctx, `
+	rows, err := db.Query(ctx, `
 		SELECT `+Findings.List("f")+`, coalesce(p.tag, c.board || '/' || c.way, '')
 		  FROM finding f
 		  LEFT JOIN place p ON p.building_id = f.building_id AND p.id = f.subject_id
-		  LEFT JOIN circuit c ON c.building_id = f.building_id AND c.id = f.subject_id
-		 WHERE f.building_id = $1
-		   AND (f.cleared_at IS NOT NULL) = $3
-		   AND ($4 = '' OR f.severity = $4)
-		   AND ($5 = '' OR f.rule = $5)
-		   AND ($6 = '' OR f.sureness = $6)
-		   AND ($7::uuid IS NULL OR f.subject_id = $7)
-		   AND ($8::uuid IS NULL OR p.space_id = $8)
-		   AND ($9::uuid IS NULL OR f.lamp_model_id = $9)
-		   AND ($10::uuid IS NULL OR f.driver_model_id = $10)
-		   AND ($11::uuid IS NULL OR f.dimmer_model_id = $11)
-		   AND ($12::boolean IS NULL OR $12 = `+waivedSQL+`)
-		   AND (`+rankSQL+`, f.lamps) <= ($13, $14)
-		   AND ((`+rankSQL+`, f.lamps) < ($13, $14) OR (f.opened_at, f.id) > ($15, $16))
-		 ORDER BY `+rankSQL+` DESC, f.lamps DESC, f.opened_at, f.id
-		 LIMIT $17`,
-		s.Building, day, f.Cleared, f.Severity, f.Rule, f.Sureness, orNil(f.Subject), orNil(f.Space), orNil(f.Lamp), orNil(f.Driver), orNil(f.Dimmer),
-		f.Waived, rank, lamps, opened, last, page.Limit+1)
+		  LEFT JOIN circuit c ON c.building_id = f.building_id AND c.id = f.subject_id`+where+`
+		   AND (f.cleared_at IS NOT NULL) = $4
+		   AND ($5 = '' OR f.severity = $5)
+		   AND ($6 = '' OR f.rule = $6)
+		   AND ($7 = '' OR f.sureness = $7)
+		   AND ($8 = '' OR f.subject_kind = $8)
+		   AND ($9::uuid IS NULL OR f.subject_id = $9)
+		   AND ($10::uuid IS NULL OR p.space_id = $10)
+		   AND ($11::uuid IS NULL OR f.lamp_model_id = $11)
+		   AND ($12::uuid IS NULL OR f.driver_model_id = $12)
+		   AND ($13::uuid IS NULL OR f.dimmer_model_id = $13)
+		   AND `+after+`
+		 ORDER BY `+order+`
+		 LIMIT $18`,
+		one, two, three, f.Cleared, f.Severity, f.Rule, f.Sureness, f.Kind, orNil(f.Subject), orNil(f.Space), orNil(f.Lamp), orNil(f.Driver), orNil(f.Dimmer),
+		rank, lamps, opened, last, page.Limit+1)
 	if err != nil {
 		return nil, "", domain.Classify(err, "finding")
 	}
+	defer rows.Close()
 	out := []Finding{}
 	var row Finding
 	targets := append(Findings.Targets(&row), &row.Tag)
 	for rows.Next() {
 		row = Finding{}
 		if err := rows.Scan(targets...); err != nil {
-			rows.Close()
 			return nil, "", domain.Classify(err, "finding")
 		}
 		row.explain()
 		out = append(out, row)
 	}
-	rows.Close()
 	if err := rows.Err(); err != nil {
 		return nil, "", domain.Classify(err, "finding")
 	}
@@ -91,7 +110,7 @@ func List(ctx context.Context, s domain.Scope, f Filter, page domain.Page) ([]Fi
 		l := &out[len(out)-1]
 		next = domain.EncodeCursor(retrofit.Severity(l.Severity).Rank(), l.Lamps, l.OpenedAt, l.ID)
 	}
-	return out, next, withWaivers(ctx, s, out, day)
+	return out, next, nil
 }
 
 // Get returns one finding with its arithmetic.
@@ -286,7 +305,7 @@ func Groups(ctx context.Context, s domain.Scope, cat *plant.Catalogue) ([]Group,
 	}
 	rows, err := s.Query(ctx, `
 		SELECT f.rule, f.lamp_model_id, f.driver_model_id, f.dimmer_model_id, max(`+rankSQL+`), bool_or(f.blocks), count(*), sum(f.lamps), 1,
-		       count(*) FILTER (WHERE `+waivedSQL+`), min(f.opened_at), (array_agg(f.sentence ORDER BY f.lamps DESC, f.id))[1]
+		       count(*) FILTER (WHERE `+waivedOn("$1", "$2")+`), min(f.opened_at), (array_agg(f.sentence ORDER BY f.lamps DESC, f.id))[1]
 		  FROM finding f
 		 WHERE f.building_id = $1 AND f.cleared_at IS NULL
 		 GROUP BY f.rule, f.lamp_model_id, f.driver_model_id, f.dimmer_model_id`, s.Building, day)

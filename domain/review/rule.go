@@ -52,9 +52,16 @@ func Surenesses() []string {
 	return []string{string(retrofit.Recorded), string(retrofit.OnRange), string(retrofit.Screening)}
 }
 
+// SubjectKinds are the words for what a finding is about.
+func SubjectKinds() []string {
+	return []string{string(retrofit.OnCircuit), string(retrofit.OnDimmer), string(retrofit.OnDriver), string(retrofit.OnFixture)}
+}
+
 // State says whether the findings of a building are those of its records as they stand.
 type State struct {
 	Pending   bool       `json:"pending"`
+	Owed      int        `json:"reviews_owed"`         // of the whole building, of a tree or of a model's places
+	Since     *time.Time `json:"owed_since,omitempty"` // the oldest
 	RuleSet   int        `json:"rule_set"`
 	RecheckAt *time.Time `json:"recheck_at,omitempty"` // when time alone may next change them
 }
@@ -62,10 +69,11 @@ type State struct {
 // StateOf returns the state of s's building.
 func StateOf(ctx context.Context, s domain.Scope) (State, error) {
 	out := State{RuleSet: RuleSet}
-	var err error
-	if out.Pending, err = PendingIn(ctx, s, s.Building); err != nil {
-		return out, err
+	err := s.QueryRow(ctx, `SELECT count(*), min(created_at) FROM review_due WHERE building_id IS NULL OR building_id = $1`, s.Building).Scan(&out.Owed, &out.Since)
+	if err != nil {
+		return out, domain.Classify(err, "review")
 	}
+	out.Pending = out.Owed > 0
 	err = s.QueryRow(ctx, `SELECT min(recheck_at) FROM tree WHERE building_id = $1`, s.Building).Scan(&out.RecheckAt)
 	return out, domain.Classify(err, "review")
 }
