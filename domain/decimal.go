@@ -13,7 +13,8 @@ type Decimal string
 // Valid reports whether d is such a number.
 func (d Decimal) Valid() bool { return amountForm.MatchString(string(d)) }
 
-// plain returns d with as many places as it needs, two at least: 4.5 and 4.5000 are both 4.50. What is no decimal stays.
+// plain returns d with as many places as it needs, two at least, no zeros in front and no sign of nothing: 4.5 and 04.5000
+// are both 4.50. What is no decimal stays.
 func (d Decimal) plain() Decimal {
 	if !d.Valid() {
 		return d
@@ -23,7 +24,14 @@ func (d Decimal) plain() Decimal {
 	for len(places) < 2 {
 		places += "0"
 	}
-	return Decimal(whole + "." + places)
+	digits, minus := strings.CutPrefix(whole, "-")
+	if digits = strings.TrimLeft(digits, "0"); digits == "" {
+		digits = "0"
+	}
+	if minus && digits+places != "000" {
+		digits = "-" + digits
+	}
+	return Decimal(digits + "." + places)
 }
 
 // UnmarshalJSON reads a decimal from a JSON string.
