@@ -148,7 +148,7 @@ func drawBuilding(i int, o estateOptions) *sketch {
 	for room := 0; k.lit < want; room++ {
 		k.room(fmt.Sprint(room/40), fmt.Sprintf("Room %d", room%40+1), []string{"office", "corridor", "classroom", "store"}[room%4], "steps", 3.0)
 		for n := 0; n < 6 && k.lit < want; n++ {
-			if r.Float64() < 0.10 {
+			if r.Float64() < 0.05 {
 				faulty[r.IntN(8)].draw(k)
 			} else {
 				sound[[]int{0, 0, 1, 3, 4, 6}[r.IntN(6)]].draw(k)
@@ -171,51 +171,57 @@ func (k *sketch) store(ctx context.Context, pool *pgxpool.Pool, reviewer *review
 	if i < len(invented) && k.code == invented[i].code {
 		b.Name, b.Address = invented[i].name, invented[i].address
 	}
-	began := at.AddDate(-2, 0, 0)
-	err = domain.In(ctx, pool, id, ours, began, func(s domain.Scope) error {
-		fresh := b
-		if err := site.CreateBuilding(ctx, s, &fresh); err != nil {
+	// All of it or nothing, its past included: a building that is there is complete.
+	err = domain.In(ctx, pool, id, ours, at.AddDate(-2, 0, 0), func(s domain.Scope) error {
+		if err := domain.Within(ctx, s, id, func(s domain.Scope) error { return k.build(ctx, s, reviewer, b) }); err != nil {
 			return err
 		}
-		rate := site.Rate{Rate: site.EnergyRate, FromDate: "2024-01-01", Amount: "0.28", Currency: "EUR", Source: "invented"}
-		rate.ID = k.id("rate", rate.Rate)
-		if err := site.CreateRate(ctx, s, &rate); err != nil {
-			return err
+		late := s
+		late.At = at.UTC().Truncate(time.Microsecond)
+		for _, tell := range k.events {
+			err := domain.Within(ctx, late, id, func(s domain.Scope) error { return tell(&telling{ctx, s, reviewer, late.At}) })
+			if err != nil {
+				return err
+			}
 		}
-		_, err := reviewer.Change(ctx, s, review.Touch{}, func(e *plant.Edit) error {
-			sent := k.bulk.Clone()
-			_, err := e.Upsert(ctx, &sent)
-			return err
-		})
-		return err
+		return nil
 	})
 	if err != nil {
 		return sum, err
-	}
-	t := telling{ctx: ctx, pool: pool, reviewer: reviewer, building: id, at: at}
-	for _, tell := range k.events {
-		if err := tell(&t); err != nil {
-			return sum, err
-		}
 	}
 	sum.Made = 1
 	return sum, nil
 }
 
+// build writes the building and its records as they were when it was fitted out.
+func (k *sketch) build(ctx context.Context, s domain.Scope, reviewer *review.Reviewer, b site.Building) error {
+	if err := site.CreateBuilding(ctx, s, &b); err != nil {
+		return err
+	}
+	rate := site.Rate{Rate: site.EnergyRate, FromDate: "2024-01-01", Amount: "0.28", Currency: "EUR", Source: "invented"}
+	rate.ID = k.id("rate", rate.Rate)
+	if err := site.CreateRate(ctx, s, &rate); err != nil {
+		return err
+	}
+	_, err := reviewer.Change(ctx, s, review.Touch{}, func(e *plant.Edit) error {
+		sent := k.bulk.Clone()
+		_, err := e.Upsert(ctx, &sent)
+		return err
+	})
+	return err
+}
+
 // telling tells what happened in a building, each thing as of now.
 type telling struct {
 	ctx      context.Context
-	pool     *pgxpool.Pool
+	scope    domain.Scope
 	reviewer *review.Reviewer
-	building domain.ID
 	at       time.Time
 }
 
 func (t *telling) change(f func(*plant.Edit) error) error {
-	return domain.In(t.ctx, t.pool, t.building, ours, t.at, func(s domain.Scope) error {
-		_, err := t.reviewer.Change(t.ctx, s, review.Touch{}, f)
-		return err
-	})
+	_, err := t.reviewer.Change(t.ctx, t.scope, review.Touch{}, f)
+	return err
 }
 
 func (t *telling) swap(w plant.Swap) error {

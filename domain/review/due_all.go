@@ -3,6 +3,7 @@ package review
 import (
 	"context"
 	"errors"
+	"fmt"
 	"runtime"
 	"sync"
 	"time"
@@ -35,8 +36,8 @@ type owed struct {
 // that is cut off stays owed. A program with older rules than those in force does none: it could only undo.
 func (r *Reviewer) DrainOne(ctx context.Context, db *pgxpool.Pool, now func() time.Time) (bool, error) {
 	var did bool
+	var o owed
 	err := pgx.BeginFunc(ctx, db, func(tx pgx.Tx) error {
-		var o owed
 		err := tx.QueryRow(ctx, `
 			SELECT id, building_id, tree_id, model_kind, model_id
 			  FROM review_due
@@ -67,6 +68,13 @@ func (r *Reviewer) DrainOne(ctx context.Context, db *pgxpool.Pool, now func() ti
 		_, err = tx.Exec(ctx, `DELETE FROM review_due WHERE id = $1`, o.ID)
 		return err
 	})
+	if err != nil && did && ctx.Err() == nil {
+		_, later := db.Exec(ctx, `
+			UPDATE review_due
+			   SET created_at = greatest($2, (SELECT max(created_at) FROM review_due) + interval '1 microsecond')
+			 WHERE id = $1`, o.ID, now())
+		err = errors.Join(err, later)
+	}
 	return did, domain.Classify(err, "review")
 }
 
@@ -121,7 +129,8 @@ func (r *Reviewer) withModel(ctx context.Context, db *pgxpool.Pool, building dom
 	return err
 }
 
-// RecheckDue judges again the trees whose time has come, of at most most of them, and returns how many there were.
+// RecheckDue judges again the trees whose time has come, of at most most of them, and returns how many there were. Where
+// a building fails the others are judged all the same, and the failures are told together.
 func (r *Reviewer) RecheckDue(ctx context.Context, db *pgxpool.Pool, now func() time.Time, most int) (int, error) {
 	rows, err := db.Query(ctx, `
 		SELECT building_id, tree_id
@@ -145,12 +154,13 @@ func (r *Reviewer) RecheckDue(ctx context.Context, db *pgxpool.Pool, now func() 
 		}
 		byBuilding[p.building] = append(byBuilding[p.building], p.tree)
 	}
+	var failed []error
 	for _, building := range order {
 		if _, err := r.chunk(ctx, db, building, now(), byBuilding[building]); err != nil {
-			return 0, err
+			failed = append(failed, fmt.Errorf("building %s: %w", building, err))
 		}
 	}
-	return len(list), nil
+	return len(list), errors.Join(failed...)
 }
 
 // NoteRuleSet asks for a review of every building where this program's rules are newer than those that judged last.
