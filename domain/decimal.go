@@ -13,15 +13,23 @@ type Decimal string
 // Valid reports whether d is such a number.
 func (d Decimal) Valid() bool { return amountForm.MatchString(string(d)) }
 
-// plain returns d with as many places as it needs, two at least: 4.5 and 4.5000 are both 4.50. What is no decimal stays.
+// plain returns d as it reads back from the database: with as many places as it needs, two at least, no zeros in front
+// and no sign before 0, so that 4.5, 04.50 and 4.5000 are all 4.50. What is no decimal stays.
 func (d Decimal) plain() Decimal {
 	if !d.Valid() {
 		return d
 	}
-	whole, places, _ := strings.Cut(string(d), ".")
+	digits, negative := strings.CutPrefix(string(d), "-")
+	whole, places, _ := strings.Cut(digits, ".")
+	if whole = strings.TrimLeft(whole, "0"); whole == "" {
+		whole = "0"
+	}
 	places = strings.TrimRight(places, "0")
 	for len(places) < 2 {
 		places += "0"
+	}
+	if negative && strings.Trim(whole+places, "0") != "" {
+		whole = "-" + whole
 	}
 	return Decimal(whole + "." + places)
 }
