@@ -365,3 +365,19 @@ func FuzzCursor(f *testing.F) {
 		}
 	})
 }
+
+// FuzzAccept: any header of a caller finds an offer or none.
+func FuzzAccept(f *testing.F) {
+	for _, s := range []string{"", "*/*", "text/csv;q=0.5, application/json", "application/*;q=2", "gzip;q=0, *", ";;,,=q"} {
+		f.Add(s)
+	}
+	offers := []string{"application/json", "text/csv", "application/x-ndjson"}
+	f.Fuzz(func(t *testing.T, header string) {
+		if i, ok := preferred(header, offers); ok && (i < 0 || i >= len(offers)) {
+			t.Errorf("%q prefers %d", header, i)
+		}
+		if q := quality(header); !(q >= 0 && q <= 1) {
+			t.Errorf("%q has quality %g", header, q)
+		}
+	})
+}

@@ -162,8 +162,10 @@ func TestSwaps(t *testing.T) {
 
 	// Gear without separation in the place of separated gear is told: what hangs on it was chosen for the old one.
 	open := y.As("all").Post("/v1/driver_models", map[string]any{"code": "OPEN", "name": "Gear without separation", "kind": "led_constant_voltage", "output_v": 12.0, "separation": "none"}).Want(201).Object()["id"]
+	gear := y.Get(atA + "/drivers/" + driver).Want(200)
+	y.Patch(atA+"/drivers/"+driver, map[string]any{"set_ma": 350.0}, "If-Match: "+gear.ETag()).Want(200)
 	crew.Post(atA+"/places/"+driver+"/swap", map[string]any{"part": "driver", "model_id": open, "done_at": "2026-02-22T09:00:00Z"}).Want(200)
-	if got := y.Get(atA + "/drivers/" + driver).Want(200).Object(); got["separation_before"] != "selv" || got["driver_model_id"] != open {
+	if got := y.Get(atA + "/drivers/" + driver).Want(200).Object(); got["separation_before"] != "selv" || got["driver_model_id"] != open || got["set_ma"] != nil {
 		t.Errorf("after the swap the gear is %v", got)
 	}
 	crew.Post(atA+"/places/"+driver+"/swap", map[string]any{"part": "driver", "model_id": y.models.Electronic105.ID.String(), "done_at": "2026-02-23T09:00:00Z"}).Want(200)

@@ -13,25 +13,25 @@ type Decimal string
 // Valid reports whether d is such a number.
 func (d Decimal) Valid() bool { return amountForm.MatchString(string(d)) }
 
-// plain returns d as it reads back from the database: with as many places as it needs, two at least, no zeros in front
-// and no sign before 0, so that 4.5, 04.50 and 4.5000 are all 4.50. What is no decimal stays.
+// plain returns d with as many places as it needs, two at least, no zeros in front and no sign of nothing: 4.5 and 04.5000
+// are both 4.50. What is no decimal stays.
 func (d Decimal) plain() Decimal {
 	if !d.Valid() {
 		return d
 	}
-	digits, negative := strings.CutPrefix(string(d), "-")
-	whole, places, _ := strings.Cut(digits, ".")
-	if whole = strings.TrimLeft(whole, "0"); whole == "" {
-		whole = "0"
-	}
+	whole, places, _ := strings.Cut(string(d), ".")
 	places = strings.TrimRight(places, "0")
 	for len(places) < 2 {
 		places += "0"
 	}
-	if negative && strings.Trim(whole+places, "0") != "" {
-		whole = "-" + whole
+	digits, minus := strings.CutPrefix(whole, "-")
+	if digits = strings.TrimLeft(digits, "0"); digits == "" {
+		digits = "0"
 	}
-	return Decimal(whole + "." + places)
+	if minus && digits+places != "000" {
+		digits = "-" + digits
+	}
+	return Decimal(digits + "." + places)
 }
 
 // UnmarshalJSON reads a decimal from a JSON string.

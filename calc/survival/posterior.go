@@ -126,3 +126,6 @@ func (f *Fit) Grid() []Draw {
 	}
 	return out
 }
+
+// B is the age by which a share p has failed.
+func (d Draw) B(p float64) float64 { return math.Exp(d.Mu + d.Sigma*d.Family.quantile(p)) }

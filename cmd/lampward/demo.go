@@ -57,14 +57,8 @@ func (c *demoCommand) on(ctx context.Context, s *streams, db *opened) error {
 	if err != nil {
 		return err
 	}
-	for {
-		did, err := r.DrainOne(ctx, db.pool, s.clock)
-		if err != nil {
-			return err
-		}
-		if !did {
-			break
-		}
+	if err := drain(ctx, db.pool, r, s.clock); err != nil {
+		return err
 	}
 	if err := review.CountTotals(ctx, db.pool, s.clock()); err != nil {
 		return err

@@ -51,6 +51,10 @@ func loadEstate(ctx context.Context, pool *pgxpool.Pool, reviewer *review.Review
 	if err := storeCatalogue(ctx, pool, o.At); err != nil {
 		return sum, fmt.Errorf("the invented catalogue: %w", err)
 	}
+	// What the catalogue owes is owed by the buildings that stand already, not by those that are drawn with it.
+	if err := drain(ctx, pool, reviewer, func() time.Time { return o.At }); err != nil {
+		return sum, err
+	}
 	n := len(invented)
 	if o.Fixtures > 0 {
 		n = max(1, (o.Fixtures+perBuilding-1)/perBuilding)
@@ -274,4 +278,13 @@ func storeMissing[T any, P interface {
 		}
 	}
 	return nil
+}
+
+// drain makes the reviews that are owed.
+func drain(ctx context.Context, pool *pgxpool.Pool, reviewer *review.Reviewer, now func() time.Time) error {
+	for {
+		if did, err := reviewer.DrainOne(ctx, pool, now); err != nil || !did {
+			return err
+		}
+	}
 }

@@ -176,6 +176,10 @@ func CreateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 		return err
 	}
 	event.Record(s, event.Act{Action: kind + ".created", Kind: kind, ID: h.ID, Body: row})
+	switch any(row).(type) {
+	case *LampModel, *DriverModel, *DimmerModel, *FixtureModel:
+		return bump(ctx, s) // nothing holds a new model: no review is owed
+	}
 	return raise(ctx, s, kind, row)
 }
 
@@ -274,8 +278,8 @@ func RetireModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 // raise counts a change of the catalogue and asks for the reviews it makes necessary: of what holds the record as it
 // stands now and, where it was changed, as it stood before. A price makes none.
 func raise(ctx context.Context, s domain.Scope, kind string, rows ...any) error {
-	if _, err := s.Exec(ctx, `UPDATE catalogue_head SET seq = seq + 1 WHERE id = 1`); err != nil {
-		return domain.Classify(err, "catalogue")
+	if err := bump(ctx, s); err != nil {
+		return err
 	}
 	type holder struct {
 		kind  string
@@ -318,6 +322,12 @@ func raise(ctx context.Context, s domain.Scope, kind string, rows ...any) error 
 		}
 	}
 	return nil
+}
+
+// bump says that the catalogue is another one.
+func bump(ctx context.Context, s domain.Scope) error {
+	_, err := s.Exec(ctx, `UPDATE catalogue_head SET seq = seq + 1 WHERE id = 1`)
+	return domain.Classify(err, "catalogue")
 }
 
 func sameHours(a, b *site.SpaceUse) bool {

@@ -253,6 +253,7 @@ func (e *Edit) carry(ctx context.Context, w Swap) error {
 		return e.set(ctx, w, `
 			UPDATE place
 			   SET driver_model_id = $3, version = version + 1, updated_at = $4,
+			       set_ma = NULL, -- it was set on the gear that left; nobody has looked at this one
 			       fitted_at = CASE WHEN kind = 'driver' THEN $5 ELSE fitted_at END,
 			       separation_before = CASE WHEN kind = 'driver' AND $6 <> '' THEN $6 ELSE separation_before END
 			 WHERE building_id = $1 AND id = $2 AND kind IN ('driver', 'fixture')`, w.ModelID, e.At, w.DoneAt, before)

@@ -20,7 +20,7 @@ import (
 // what is stored must be what a fresh look at the records finds, and every record must know the tree it is in.
 func TestFindingsEqualAFreshReviewAfterRandomEdits(t *testing.T) {
 	x := setup(t)
-	const writers, each = 8, 130
+	const writers, each = 8, 250
 	for i := range 24 {
 		lamp := []domain.ID{x.m.Halogen35.ID, x.m.LED7.ID, x.m.LED7DC.ID}[i%3]
 		driver := []domain.ID{x.m.Electronic105.ID, x.m.Electronic60.ID, x.m.Wound100.ID}[i/8]
