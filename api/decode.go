@@ -35,7 +35,36 @@ func decodeJSON[T any](data []byte) (T, error) {
 	if err := json.Unmarshal(data, &v); err != nil {
 		return v, unexpected(err)
 	}
+	inUTC(reflect.ValueOf(&v).Elem())
 	return v, nil
+}
+
+// inUTC turns every time in v into UTC at the database's precision, as it will be read again: the same request sent
+// twice then compares equal, and the first answer is what later ones say.
+func inUTC(v reflect.Value) {
+	switch v.Kind() {
+	case reflect.Pointer:
+		if !v.IsNil() {
+			inUTC(v.Elem())
+		}
+	case reflect.Slice:
+		if k := v.Type().Elem().Kind(); k != reflect.Struct && k != reflect.Pointer {
+			return
+		}
+		for i := range v.Len() {
+			inUTC(v.Index(i))
+		}
+	case reflect.Struct:
+		if t, ok := v.Addr().Interface().(*time.Time); ok {
+			*t = t.UTC().Truncate(time.Microsecond)
+			return
+		}
+		for i := range v.NumField() {
+			if f := v.Field(i); f.CanSet() {
+				inUTC(f)
+			}
+		}
+	}
 }
 
 // unexpected tells of a value that inspect let pass and encoding/json did not.

@@ -6,6 +6,7 @@ import (
 	"regexp"
 	"slices"
 	"strings"
+	"time"
 	"unicode"
 	"unicode/utf8"
 )
@@ -45,7 +46,7 @@ func (c *Check) Err() error {
 // Range wants v absent or from low to high in unit, and a number.
 func (c *Check) Range(pointer string, v *float64, low, high float64, unit string) {
 	if v != nil && (math.IsNaN(*v) || *v < low || *v > high) {
-		c.Add(pointer, "must be from %s to %s %s", plain(low), plain(high), unit)
+		c.Add(pointer, "%s", strings.TrimSpace(fmt.Sprintf("must be from %s to %s %s", plain(low), plain(high), unit)))
 	}
 }
 
@@ -83,8 +84,8 @@ func (c *Check) Line(pointer, v string, required bool) {
 	c.readable(pointer, v, MaxLine, "")
 }
 
-// Text wants text that may run over several lines.
-func (c *Check) Text(pointer, v string) { c.readable(pointer, v, MaxText, "\n\t") }
+// Text wants text that may run over several lines. It may hold the two joiners that some scripts are written with.
+func (c *Check) Text(pointer, v string) { c.readable(pointer, v, MaxText, "\n\t\u200c\u200d") }
 
 var codeForm = regexp.MustCompile(`^[A-Za-z0-9][A-Za-z0-9._/-]{0,39}$`)
 
@@ -101,18 +102,40 @@ func (c *Check) readable(pointer, v string, most int, allowed string) {
 		c.Add(pointer, "must be UTF-8 text")
 	case utf8.RuneCountInString(v) > most:
 		c.Add(pointer, "must be at most %d characters", most)
-	case strings.ContainsFunc(v, func(r rune) bool {
-		return (unicode.IsControl(r) && !strings.ContainsRune(allowed, r)) || steers(r)
-	}):
-		c.Add(pointer, "must not hold control characters or marks that turn the direction of text")
+	case strings.ContainsFunc(v, func(r rune) bool { return unseen(r) && !strings.ContainsRune(allowed, r) }):
+		c.Add(pointer, "must not hold control characters, characters without width or marks that turn the direction of text")
 	case v != strings.TrimSpace(v):
 		c.Add(pointer, "must not begin or end with a blank")
 	}
 }
 
-// steers reports whether r overrides the direction of text: such marks make a label read as another one.
-func steers(r rune) bool {
-	return r >= 0x202A && r <= 0x202E || r >= 0x2066 && r <= 0x2069 || r == 0x200E || r == 0x200F || r == 0x061C
+// unseen reports whether r cannot be seen: a control, a separator of lines, a character without width, or a mark that
+// turns the direction of text (Unicode categories Cc, Cf, Zl, Zp). With such a character two labels look the same and
+// are not, or one reads as another.
+func unseen(r rune) bool { return unicode.In(r, unicode.Cc, unicode.Cf, unicode.Zl, unicode.Zp) }
+
+// Times that a record may hold. What lies outside is a slip of the pen, and one beyond the year 9999 could be stored
+// but never be written as JSON again.
+var (
+	earliest = time.Date(1900, 1, 1, 0, 0, 0, 0, time.UTC)
+	latest   = time.Date(2200, 1, 1, 0, 0, 0, 0, time.UTC)
+)
+
+// Time wants v absent or in the years 1900 to 2199.
+func (c *Check) Time(pointer string, v *time.Time) {
+	if v != nil && (v.Before(earliest) || !v.Before(latest)) {
+		c.Add(pointer, "must lie in the years 1900 to 2199")
+	}
+}
+
+// MostItems is the longest list within one record.
+const MostItems = 100
+
+// Items wants a list of n items that is not too long.
+func (c *Check) Items(pointer string, n int) {
+	if n > MostItems {
+		c.Add(pointer, "must hold at most %d items", MostItems)
+	}
 }
 
 func plain(v float64) string {

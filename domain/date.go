@@ -36,9 +36,15 @@ func (d *Date) ScanDate(v pgtype.Date) error {
 	return nil
 }
 
-// Date wants v absent or a day of the calendar.
+// Date wants v absent or a day of the calendar in the years 1900 to 2199.
 func (c *Check) Date(pointer string, v *Date) {
-	if v != nil && !v.Valid() {
-		c.Add(pointer, "must be a date such as 2026-03-31")
+	if v == nil {
+		return
 	}
+	day, err := time.Parse(time.DateOnly, string(*v))
+	if err != nil {
+		c.Add(pointer, "must be a date such as 2026-03-31")
+		return
+	}
+	c.Time(pointer, &day)
 }

@@ -107,7 +107,7 @@ func Classify(err error, what string) error {
 		return &Error{Kind: Conflict, Msg: "another " + what + " already has this identifier, tag or code", Err: err}
 	case pg.Code == "23503":
 		return &Error{Kind: Invalid, Msg: what + " names a record that does not exist here, or is still in use", Err: err}
-	case pg.Code == "23514", pg.Code == "23502", pg.Code == "22003", pg.Code == "22P02", pg.Code == "22021", pg.Code == "22007", pg.Code == "22008":
+	case pg.Code == "23514", pg.Code == "23502", pg.Code == "22003", pg.Code == "22P02", pg.Code == "22P05", pg.Code == "22001", pg.Code == "22021", pg.Code == "22007", pg.Code == "22008":
 		return &Error{Kind: Invalid, Msg: what + " holds a value that is outside what the record allows", Err: err}
 	case pg.Code == "40001", pg.Code == "40P01":
 		return &Error{Kind: Conflict, Msg: "others were changing the same records; try again", Err: err}

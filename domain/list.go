@@ -82,7 +82,7 @@ func (t *Table[T]) Page(ctx context.Context, s Scope, page Page, matches ...Matc
 			return nil, "", err
 		}
 	}
-	limit := min(max(page.Limit, 1), MaxPage)
+	limit := page.Rows()
 	rest, args, err := t.query(s, after, limit+1, matches)
 	if err != nil {
 		return nil, "", err

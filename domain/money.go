@@ -29,4 +29,9 @@ func (m Money) Check(at string) []Field {
 }
 
 // Rat returns the amount as an exact fraction; ok is false where it is not a decimal.
-func (m Money) Rat() (r *big.Rat, ok bool) { return new(big.Rat).SetString(m.Amount) }
+func (m Money) Rat() (r *big.Rat, ok bool) {
+	if !amountForm.MatchString(m.Amount) { // SetString reads 1/3 and 1e9 too
+		return nil, false
+	}
+	return new(big.Rat).SetString(m.Amount)
+}

@@ -14,6 +14,9 @@ type Page struct {
 // MaxPage is the most rows a page holds.
 const MaxPage = 1000
 
+// Rows returns how many rows the page may hold: Limit, brought into 1..MaxPage.
+func (p Page) Rows() int { return min(max(p.Limit, 1), MaxPage) }
+
 // EncodeCursor makes an opaque cursor of the last row's key.
 func EncodeCursor(key ...any) string {
 	b, err := json.Marshal(key)
@@ -35,7 +38,7 @@ func DecodeCursor(cursor string, key ...any) error {
 		return bad
 	}
 	for i := range key {
-		if json.Unmarshal(parts[i], key[i]) != nil {
+		if string(parts[i]) == "null" || json.Unmarshal(parts[i], key[i]) != nil {
 			return bad
 		}
 	}

@@ -276,7 +276,7 @@ func (t *Table[T]) UpdateAll(ctx context.Context, s Scope, rows []*T) error {
 	return Classify(err, t.What)
 }
 
-// Same reports whether two rows agree in everything a client may set.
+// Same reports whether two rows agree in everything a client may set, and are of one kind: kinds of place share a table.
 func (t *Table[T]) Same(a, b *T) bool {
 	va, vb := t.Values(a), t.Values(b)
 	for i, c := range t.columns {
@@ -284,7 +284,7 @@ func (t *Table[T]) Same(a, b *T) bool {
 		case "version", "created_at", "updated_at", "retired_at":
 			continue
 		}
-		if c.private {
+		if c.private && c.name != "kind" {
 			continue
 		}
 		if !alike(va[i], vb[i]) {

@@ -84,6 +84,7 @@ func hash(secret string) []byte {
 func (k *Key) Validate(now time.Time) error {
 	c := domain.NewCheck("key")
 	c.Line("/name", k.Name, true)
+	c.Time("/expires_at", k.ExpiresAt)
 	if k.ExpiresAt != nil && !k.ExpiresAt.After(now) {
 		c.Add("/expires_at", "must lie ahead")
 	}
@@ -99,6 +100,7 @@ func (g *Grant) Validate() error {
 	if !slices.Contains(Roles, g.Role) {
 		c.Add("/role", "must be one of %s", strings.Join(Roles, ", "))
 	}
+	c.Time("/until", g.Until)
 	return c.Err()
 }
 
@@ -113,7 +115,7 @@ func CreateKey(ctx context.Context, s domain.Scope, k *Key, grants []Grant) (sec
 		}
 	}
 	secret = NewSecret()
-	k.Hash = hash(secret)
+	k.Hash, k.LastUsedAt = hash(secret), nil
 	begin(&k.CatalogueRow, s)
 	if err := Keys.Insert(ctx, s, k); err != nil {
 		return "", err
@@ -224,7 +226,7 @@ type Holder struct {
 var ErrUnknownKey = errors.New("access: no key in use has this secret")
 
 // Authenticate finds who holds a secret as of now. It fails with ErrUnknownKey for one that is unknown, revoked or
-// expired.
+// expired, or acts for a person who has left.
 func Authenticate(ctx context.Context, db domain.Queryer, secret string, now time.Time) (Holder, error) {
 	var h Holder
 	if !strings.HasPrefix(secret, keyLead) || len(secret) > 100 {
@@ -233,9 +235,10 @@ func Authenticate(ctx context.Context, db domain.Queryer, secret string, now tim
 	var key domain.ID
 	var person *domain.ID
 	err := db.QueryRow(ctx, `
-		SELECT id, name, person_id, expires_at
-		  FROM api_key
-		 WHERE hash = $1 AND retired_at IS NULL AND (expires_at IS NULL OR expires_at > $2)`, hash(secret), now).Scan(&key, &h.Name, &person, &h.Expires)
+		SELECT k.id, k.name, k.person_id, k.expires_at
+		  FROM api_key k
+		  LEFT JOIN person p ON p.id = k.person_id
+		 WHERE k.hash = $1 AND k.retired_at IS NULL AND p.retired_at IS NULL AND (k.expires_at IS NULL OR k.expires_at > $2)`, hash(secret), now).Scan(&key, &h.Name, &person, &h.Expires)
 	if errors.Is(err, pgx.ErrNoRows) {
 		return h, ErrUnknownKey
 	}

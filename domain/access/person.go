@@ -79,6 +79,9 @@ func turnPerson(ctx context.Context, s domain.Scope, id domain.ID, version int64
 	if err != nil {
 		return p, err
 	}
+	if (p.RetiredAt == nil) == (at == nil) {
+		return p, domain.Conflictf("the person is already in that state")
+	}
 	p.Version, p.RetiredAt, p.UpdatedAt = version, at, s.At
 	if err := Persons.Update(ctx, s, &p); err != nil {
 		return p, err

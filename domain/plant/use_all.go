@@ -19,7 +19,7 @@ type Use struct {
 }
 
 // Uses lists places that carry a model under any of its ids, odd lamps included, in the buildings named (in all where
-// buildings is nil): at most page.Limit of them, in the order of buildings and places.
+// buildings is nil): at most page.Rows() of them, in the order of buildings and places.
 func Uses(ctx context.Context, db domain.Queryer, kind string, ids []domain.ID, buildings []domain.ID, page domain.Page) ([]Use, string, error) {
 	column, ok := map[string]string{KindLamp: "lamp_model_id", KindDriver: "driver_model_id", KindDimmer: "dimmer_model_id", KindFixture: "fixture_model_id"}[kind]
 	if !ok {
@@ -48,7 +48,7 @@ func Uses(ctx context.Context, db domain.Queryer, kind string, ids []domain.ID, 
 		                 WHERE u.building_id = p.building_id AND u.place_id = p.id AND u.`+column+` = ANY($1)
 		                   AND u.removed_at IS NULL AND u.retired_at IS NULL))
 		 ORDER BY p.building_id, p.id
-		 LIMIT $5`, domain.IDs(ids), only, building, place, page.Limit+1)
+		 LIMIT $5`, domain.IDs(ids), only, building, place, page.Rows()+1)
 	if err != nil {
 		return nil, "", domain.Classify(err, "place")
 	}
@@ -58,8 +58,8 @@ func Uses(ctx context.Context, db domain.Queryer, kind string, ids []domain.ID, 
 	if err != nil {
 		return nil, "", domain.Classify(err, "place")
 	}
-	if len(out) > page.Limit {
-		out = out[:page.Limit]
+	if len(out) > page.Rows() {
+		out = out[:page.Rows()]
 		last := out[len(out)-1]
 		return out, domain.EncodeCursor(last.BuildingID, last.PlaceID), nil
 	}

@@ -31,12 +31,14 @@ func (h *ModelHead) check(c *domain.Check, name string) {
 	c.Code("/code", h.Code)
 	c.Line("/name", name, true)
 	c.Text("/note", h.Note)
+	c.Items("/also_known_as", len(h.AlsoKnownAs))
 	for i, code := range h.AlsoKnownAs {
 		c.Line(fmt.Sprintf("/also_known_as/%d", i), code, true)
 	}
 }
 
 func dimming(c *domain.Check, accepted []string) {
+	c.Items("/dimming", len(accepted))
 	for i, d := range accepted {
 		if !slices.Contains(dimmings, d) {
 			c.Add(fmt.Sprintf("/dimming/%d", i), "must be one of %s", strings.Join(dimmings, ", "))
@@ -135,6 +137,7 @@ func (m *DriverModel) Validate() error {
 	c.Range("/output_lead_m", m.OutputLeadM, 0.1, 1000, "m")
 	c.Range("/ta_c", m.TaC, -40, 150, "degC")
 	c.Range("/tc_c", m.TcC, 0, 200, "degC")
+	c.Items("/derating", len(m.Derating))
 	for i, p := range m.Derating {
 		c.Range(fmt.Sprintf("/derating/%d/air_c", i), &p.AirC, -60, 200, "degC")
 		c.Range(fmt.Sprintf("/derating/%d/share_pct", i), &p.SharePct, 0, 100, "%")
@@ -274,6 +277,7 @@ func (k *Circuit) Validate() error {
 	c.OneOf("/neutral", k.Neutral, "own", "common", "borrowed")
 	c.OneOf("/central_battery", k.CentralBattery, "none", "ac", "dc")
 	c.Source("/fact_source", k.FactSource)
+	c.Items("/pulse_curve", len(k.PulseCurve))
 	for i, p := range k.PulseCurve {
 		c.Range(fmt.Sprintf("/pulse_curve/%d/width_us", i), &p.WidthUS, 0.1, 1e6, "us")
 		c.Range(fmt.Sprintf("/pulse_curve/%d/peak_a", i), &p.PeakA, 0.1, 1e6, "A")
@@ -288,6 +292,7 @@ func (h *PlaceHead) check(c *domain.Check) {
 	c.Text("/note", h.Note)
 	c.Source("/fact_source", h.FactSource)
 	c.Count("/fed_output", h.FedOutput, 1, 64)
+	c.Time("/fitted_at", h.FittedAt)
 	if h.FedByCircuitID != nil && h.FedByPlaceID != nil {
 		c.Add("/fed_by_place_id", "must be absent where fed_by_circuit_id is given: a place has one normal feed")
 	}
@@ -313,6 +318,7 @@ func (d *Driver) Validate() error {
 	c.Range("/cable_m", d.CableM, 0, 1000, "m")
 	c.Range("/cable_mm2", d.CableMM2, 0.1, 100, "mm2")
 	c.OneOf("/cable_class", d.CableClass, "1", "2", "5", "6")
+	c.Items("/cable_taps_m", len(d.CableTapsM))
 	for i, m := range d.CableTapsM {
 		c.Range(fmt.Sprintf("/cable_taps_m/%d", i), &m, 0, 1000, "m")
 	}
@@ -332,6 +338,7 @@ func (f *Fixture) Validate() error {
 		c.Add("/driver_model_id", "belongs to a fixture whose gear is integral; other gear is a driver of its own")
 	}
 	c.Count("/lamp_count", f.LampCount, 0, 1000)
+	c.Time("/lamps_fitted_at", f.LampsFittedAt)
 	c.Line("/switch_group", f.SwitchGroup, false)
 	c.Count("/strings", f.Strings, 1, 1000)
 	c.OneOf("/fed_ends", f.FedEnds, "one", "both", "gear")

@@ -10,6 +10,7 @@ import (
 	"time"
 
 	"github.com/jackc/pgx/v5"
+	"github.com/jackc/pgx/v5/pgtype"
 	"github.com/jackc/pgx/v5/pgxpool"
 )
 
@@ -81,6 +82,11 @@ func (o PoolOptions) config(url string) (*pgxpool.Config, error) {
 		config.ConnConfig.ConnectTimeout = 5 * time.Second
 	}
 	config.ConnConfig.Tracer = o.Tracer
+	// Times read are UTC on every machine, as they are written, whatever its own zone is.
+	config.AfterConnect = func(_ context.Context, conn *pgx.Conn) error {
+		conn.TypeMap().RegisterType(&pgtype.Type{Name: "timestamptz", OID: pgtype.TimestamptzOID, Codec: &pgtype.TimestamptzCodec{ScanLocation: time.UTC}})
+		return nil
+	}
 
 	params := config.ConnConfig.RuntimeParams
 	if params["application_name"] == "" {

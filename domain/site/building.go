@@ -3,6 +3,7 @@ package site
 
 import (
 	"context"
+	"reflect"
 	"time"
 
 	"lampward/calc/loading"
@@ -90,11 +91,14 @@ func UpdateBuilding(ctx context.Context, s domain.Scope, b *Building) error {
 	if before.RetiredAt != nil {
 		return domain.Conflictf("the building is retired; restore it first")
 	}
-	b.ID, b.CreatedAt, b.UpdatedAt = s.Building, before.CreatedAt, s.At
+	b.ID, b.CreatedAt, b.UpdatedAt, b.RetiredAt = s.Building, before.CreatedAt, s.At, nil
 	if err := Buildings.Update(ctx, s, b); err != nil {
 		return err
 	}
 	event.Record(s, event.Act{Action: "building.changed", Kind: "building", ID: b.ID, Body: event.Changed(before, b)})
+	if reflect.DeepEqual(before.Supply, b.Supply) {
+		return nil
+	}
 	return event.ReviewDue(ctx, s, event.Due{Building: &s.Building, Why: "building changed"})
 }
 
@@ -129,6 +133,9 @@ func RestoreBuilding(ctx context.Context, s domain.Scope, version int64) (Buildi
 }
 
 func setRetired(ctx context.Context, s domain.Scope, b Building, version int64, at *time.Time, action string) (Building, error) {
+	if (b.RetiredAt == nil) == (at == nil) {
+		return Building{}, domain.Conflictf("the building is already in that state")
+	}
 	b.Version, b.RetiredAt, b.UpdatedAt = version, at, s.At
 	if err := Buildings.Update(ctx, s, &b); err != nil {
 		return Building{}, err

@@ -59,6 +59,9 @@ func turnRate(ctx context.Context, s domain.Scope, id domain.ID, version int64, 
 	if err != nil {
 		return r, err
 	}
+	if (r.RetiredAt == nil) == (at == nil) {
+		return r, domain.Conflictf("the rate is already in that state")
+	}
 	r.Version, r.RetiredAt, r.UpdatedAt = version, at, s.At
 	if err := Rates.Update(ctx, s, &r); err != nil {
 		return r, err

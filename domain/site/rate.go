@@ -58,11 +58,12 @@ func (r *Rate) Validate() error {
 	return c.Err()
 }
 
-// RateOn returns the amount of a rate on a day and its currency; ok is false where none is on record.
+// RateOn returns the amount of a rate on a day and its currency, the first by code where several began on one day; ok is
+// false where none is on record.
 func RateOn(ctx context.Context, s domain.Scope, rate string, day domain.Date) (r Rate, ok bool, err error) {
 	list, err := Rates.Select(ctx, s, `
 		WHERE building_id = $1 AND rate = $2 AND from_date <= $3 AND retired_at IS NULL
-		ORDER BY from_date DESC
+		ORDER BY from_date DESC, currency
 		LIMIT 1`, s.Building, rate, day)
 	if err != nil || len(list) == 0 {
 		return r, false, err

@@ -2,6 +2,7 @@ package site
 
 import (
 	"context"
+	"fmt"
 
 	"lampward/domain"
 )
@@ -60,8 +61,9 @@ func (p *Space) Validate() error {
 	c.OneOf("/cleanliness", p.Cleanliness, "clean", "normal", "dirty")
 	c.OneOf("/survey_state", p.SurveyState, "not_started", "partial", "done")
 	c.Source("/fact_source", p.FactSource)
-	for _, permit := range p.Permits {
-		c.Line("/permits", permit, true)
+	c.Items("/permits", len(p.Permits))
+	for i, permit := range p.Permits {
+		c.Line(fmt.Sprintf("/permits/%d", i), permit, true)
 	}
 	return c.Err()
 }
