@@ -18,7 +18,8 @@ import (
 const MaxBulk = 10_000
 
 // A Bulk is many records of one building to be stored at once. A record whose id, or whose own name in the building,
-// is known changes that record; others are new. Fields left out are absent, as in a PUT.
+// is known changes that record; others are new. A feed goes by its place, source, purpose and input, a control by its
+// dimmer, what it acts on and its path. Fields left out are absent, as in a PUT, but a label stays.
 type Bulk struct {
 	Spaces   []site.Space  `json:"spaces,omitempty"`
 	MakeUps  []MakeUp      `json:"make_ups,omitempty"`
@@ -61,7 +62,7 @@ func (e *Edit) Upsert(ctx context.Context, b *Bulk) (BulkCounts, error) {
 	if err != nil {
 		return n, fmt.Errorf("bulk: %w", err)
 	}
-	u := &upsert{Edit: e, check: domain.NewCheck("bulk"), trees: map[domain.ID]domain.ID{}}
+	u := &upsert{Edit: e, check: domain.NewCheck("bulk"), taken: domain.NewCheck("bulk"), trees: map[domain.ID]domain.ID{}, names: map[string]string{}, ids: map[string]string{}}
 	plans := []func(context.Context) error{
 		func(ctx context.Context) error {
 			return match(ctx, u, site.Spaces, "spaces", "space", b.Spaces, nil, spaceName)
@@ -77,9 +78,16 @@ func (e *Edit) Upsert(ctx context.Context, b *Bulk) (BulkCounts, error) {
 		func(ctx context.Context) error {
 			return matchPlaces(ctx, u, Fixtures, "fixtures", KindFixture, b.Fixtures)
 		},
-		func(ctx context.Context) error { return match(ctx, u, Feeds, "feeds", "feed", b.Feeds, nil, nil) },
 		func(ctx context.Context) error {
-			return match(ctx, u, Controls, "controls", "control", b.Controls, nil, nil)
+			return match(ctx, u, Feeds, "feeds", "feed", b.Feeds, nil, feedName)
+		},
+		func(ctx context.Context) error {
+			for i := range b.Controls {
+				if b.Controls[i].Position == 0 {
+					b.Controls[i].Position = 1
+				}
+			}
+			return match(ctx, u, Controls, "controls", "control", b.Controls, nil, controlName)
 		},
 	}
 	for _, plan := range plans {
@@ -93,14 +101,15 @@ func (e *Edit) Upsert(ctx context.Context, b *Bulk) (BulkCounts, error) {
 	if err := u.check.Err(); err != nil {
 		return n, err
 	}
+	if taken := domain.FieldsOf(u.taken.Err()); taken != nil {
+		return n, &domain.Error{Kind: domain.Conflict, Msg: "other records of this building have these names already", Fields: taken}
+	}
 	if err := u.reachFar(ctx); err != nil {
 		return n, err
 	}
 	u.plantTrees(b)
-	for _, write := range u.writes {
-		if err := write(ctx); err != nil {
-			return n, err
-		}
+	if err := u.write(ctx); err != nil {
+		return n, err
 	}
 	sum := sha256.Sum256(request)
 	event.Record(e.Scope, event.Act{Action: "bulk.stored", Kind: "building", ID: e.Building,
@@ -112,60 +121,155 @@ func (e *Edit) Upsert(ctx context.Context, b *Bulk) (BulkCounts, error) {
 type upsert struct {
 	*Edit
 	check  *domain.Check
+	taken  *domain.Check // names that stored records have
 	refs   references
 	trees  map[domain.ID]domain.ID // of places and circuits that exist or are made here
-	writes []func(context.Context) error
+	names  map[string]string       // table and name -> the row of the request that has it
+	ids    map[string]string       // table and id -> the row of the request that is it
 	counts BulkCounts
+
+	far       []domain.ID // places and circuits that changed feeds and controls named before
+	spaces    []domain.ID // changed spaces
+	corrected []domain.ID // changed places
+
+	before  []func(context.Context) error // new rows that others may name
+	places  []newPlaces
+	after   []func(context.Context) error // new rows that name others
+	changes []func(context.Context) error
 }
 
-func spaceName(p *site.Space) string  { return p.Level + "\x00" + p.Name }
-func makeUpName(m *MakeUp) string     { return m.Name }
-func circuitName(k *Circuit) string   { return k.Board + "\x00" + k.Way }
-func placeName(h *PlaceHead) string   { return h.Tag }
-func splitName(name string) [2]string { a, b, _ := strings.Cut(name, "\x00"); return [2]string{a, b} }
+// newPlaces are the new places of one kind.
+type newPlaces struct {
+	heads []*PlaceHead
+	copy  func(ctx context.Context, rows []int) error
+}
+
+// write stores what was planned: what is named before what names it, and what is new before what changes.
+func (u *upsert) write(ctx context.Context) error {
+	steps := slices.Concat(u.before, []func(context.Context) error{u.copyPlaces}, u.after, u.changes)
+	for _, step := range steps {
+		if err := step(ctx); err != nil {
+			return err
+		}
+	}
+	return u.correctUnits(ctx, u.corrected)
+}
+
+// copyPlaces stores the new places in the order of their feeds: what feeds another before that one, whatever their
+// kinds. It fails with Invalid where they feed each other in a circle.
+func (u *upsert) copyPlaces(ctx context.Context) error {
+	waiting := map[domain.ID]bool{}
+	for _, p := range u.places {
+		for _, h := range p.heads {
+			waiting[h.ID] = true
+		}
+	}
+	for len(waiting) > 0 {
+		stored := len(waiting)
+		for _, p := range u.places {
+			var rows []int
+			for i, h := range p.heads {
+				if waiting[h.ID] && (h.FedByPlaceID == nil || !waiting[*h.FedByPlaceID]) {
+					rows = append(rows, i)
+				}
+			}
+			if len(rows) == 0 {
+				continue
+			}
+			if err := p.copy(ctx, rows); err != nil {
+				return err
+			}
+			for _, i := range rows {
+				delete(waiting, p.heads[i].ID)
+			}
+		}
+		if len(waiting) == stored {
+			return &domain.Error{Kind: domain.Invalid, Msg: "the feeds make a circle",
+				Fields: []domain.Field{{Pointer: "/fed_by_place_id", Detail: "must not lead back to the place itself"}}}
+		}
+	}
+	return nil
+}
+
+func spaceName(p *site.Space) string { return p.Level + "\x00" + p.Name }
+func makeUpName(m *MakeUp) string    { return m.Name }
+func circuitName(k *Circuit) string  { return k.Board + "\x00" + k.Way }
+func placeName(h *PlaceHead) string  { return h.Tag }
+
+// feedName and controlName begin with the two identifiers that rows are looked for by.
+func feedName(f *Feed) string {
+	return f.PlaceID.String() + "\x00" + either(f.FromCircuitID, f.FromPlaceID) + "\x00" + f.Purpose + "\x00" + f.Input
+}
+
+func controlName(l *ControlLink) string {
+	return l.DimmerID.String() + "\x00" + either(l.PlaceID, l.CircuitID) + "\x00" + l.Path
+}
+
+func either(a, b *domain.ID) string {
+	if a == nil {
+		a = b
+	}
+	if a == nil {
+		return domain.ID{}.String()
+	}
+	return a.String()
+}
+
+// splitName returns the two parts of a name that rows are looked for by.
+func splitName(name string) [2]string {
+	parts := append(strings.SplitN(name, "\x00", 3), "")
+	return [2]string{parts[0], parts[1]}
+}
 
 // byName finds records in use by the name they have in the building; $2 and $3 are the two parts of the names.
 var byName = map[string]string{
-	"space":    `retired_at IS NULL AND (level, name) IN (SELECT * FROM unnest($3::text[], $4::text[]))`,
-	"make_up":  `retired_at IS NULL AND name = ANY($3) AND $4::text[] IS NOT NULL`,
-	"circuit":  `retired_at IS NULL AND (board, way) IN (SELECT * FROM unnest($3::text[], $4::text[]))`,
-	"place":    `retired_at IS NULL AND tag = ANY($3) AND $4::text[] IS NOT NULL`,
-	"feed":     `false AND $3::text[] IS NOT NULL AND $4::text[] IS NOT NULL`,
-	"control":  `false AND $3::text[] IS NOT NULL AND $4::text[] IS NOT NULL`,
-	"building": "",
+	"space":   `retired_at IS NULL AND (level, name) IN (SELECT * FROM unnest($3::text[], $4::text[]))`,
+	"make_up": `retired_at IS NULL AND name = ANY($3) AND $4::text[] IS NOT NULL`,
+	"circuit": `retired_at IS NULL AND (board, way) IN (SELECT * FROM unnest($3::text[], $4::text[]))`,
+	"place":   `retired_at IS NULL AND tag = ANY($3) AND $4::text[] IS NOT NULL`,
+	"feed": `retired_at IS NULL AND (place_id, coalesce(from_circuit_id, from_place_id)) IN
+	         (SELECT a::uuid, b::uuid FROM unnest($3::text[], $4::text[]) AS n (a, b))`,
+	"control": `retired_at IS NULL AND (dimmer_id, coalesce(place_id, circuit_id)) IN
+	            (SELECT a::uuid, b::uuid FROM unnest($3::text[], $4::text[]) AS n (a, b))`,
 }
 
 func matchPlaces[T any, P placed[T]](ctx context.Context, u *upsert, t *domain.Table[T], list, kind string, rows []T) error {
 	for i := range rows {
-		h := P(&rows[i]).Place()
-		h.Kind = kind
-		if h.ID.IsZero() && h.Tag == "" {
-			h.ID = domain.NewID()
-		}
-		if h.Tag == "" {
-			h.Tag = generatedTag(kind, h.ID)
-		}
+		P(&rows[i]).Place().Kind = kind
 	}
 	return match(ctx, u, t, list, kind, rows, func(known, row P) error {
-		if known.Place().Kind != kind {
-			return errors.New("is the label of a " + known.Place().Kind)
+		h := row.Place()
+		if known == nil {
+			if h.Tag == "" {
+				h.Tag = generatedTag(kind, h.ID)
+			}
+			return nil
 		}
-		row.Place().TreeID = known.Place().TreeID
-		u.trees[known.Head().ID] = known.Place().TreeID
+		was := known.Place()
+		if was.Kind != kind {
+			return errors.New("is the label of a " + was.Kind)
+		}
+		if h.Tag == "" {
+			h.Tag = was.Tag
+		}
+		h.TreeID = was.TreeID
+		u.trees[h.ID] = was.TreeID
 		return nil
 	}, func(row P) string { return placeName(row.Place()) })
 }
 
-// match finds which rows are known, settles their heads, checks them, and plans what to write.
+// match finds which rows are known, settles their heads, checks them, and plans what to write. fix, if not nil, settles
+// a row beside the one that is known, nil where it is new.
 func match[T any, P headed[T]](ctx context.Context, u *upsert, t *domain.Table[T], list, kind string, rows []T, fix func(known, row P) error, name func(P) string) error {
 	if len(rows) == 0 {
 		return nil
 	}
 	var ids []domain.ID
+	asked := map[domain.ID]bool{}
 	var first, second []string
 	for i := range rows {
 		if id := P(&rows[i]).Head().ID; !id.IsZero() {
-			ids = append(ids, id)
+			ids, asked[id] = append(ids, id), true
 		}
 		if name != nil {
 			n := splitName(name(&rows[i]))
@@ -184,16 +288,16 @@ func match[T any, P headed[T]](ctx context.Context, u *upsert, t *domain.Table[T
 		return err
 	}
 	var made, changed []*T
-	seen := map[domain.ID]int{}
 	for i := range rows {
 		row, at := P(&rows[i]), pointer(list, i)
 		h := row.Head()
 		known := byID[h.ID]
-		if known == nil && h.ID.IsZero() && name != nil {
+		given := !h.ID.IsZero()
+		if !given && name != nil {
 			known = named[name(row)]
 		}
 		if known == nil {
-			if h.ID.IsZero() {
+			if !given {
 				h.ID = domain.NewID()
 			}
 			h.Version, h.CreatedAt = 1, u.At
@@ -206,13 +310,19 @@ func match[T any, P headed[T]](ctx context.Context, u *upsert, t *domain.Table[T
 			h.ID, h.Version, h.CreatedAt = was.ID, was.Version, was.CreatedAt
 		}
 		h.BuildingID, h.UpdatedAt, h.RetiredAt = u.Building, u.At, nil
-		if j, twice := seen[h.ID]; twice {
-			u.check.Add(at, "is the same record as row %d", j)
+		if other, twice := u.ids[t.Name+h.ID.String()]; twice {
+			u.check.Add(at, "is the same record as %s", other)
 			continue
 		}
-		seen[h.ID] = i
+		u.ids[t.Name+h.ID.String()] = at
 		u.refs.made(t.Name, h.ID)
 		u.refs.made(kind, h.ID)
+		if fix != nil {
+			if err := fix(known, row); err != nil {
+				u.check.Add(at+"/tag", "%s", err.Error())
+				continue
+			}
+		}
 		if err := row.Validate(); err != nil {
 			bad, ok := errors.AsType[*domain.Error](err)
 			if !ok {
@@ -225,38 +335,97 @@ func match[T any, P headed[T]](ctx context.Context, u *upsert, t *domain.Table[T
 			})
 			continue
 		}
-		if named, ok := any(row).(refers); ok {
-			named.refer(&u.refs, at)
+		if name != nil {
+			var holder *domain.Row
+			if other := named[name(row)]; other != nil {
+				holder = other.Head()
+			}
+			if !u.nameFree(t.Name, at, name(row), given, h, holder, asked) {
+				continue
+			}
+		}
+		if naming, ok := any(row).(refers); ok {
+			naming.refer(&u.refs, at)
+			if known != nil {
+				u.refs.keep(known, at)
+			}
 		}
 		u.keepTree(any(known), any(row))
 		switch {
 		case known == nil:
 			made = append(made, &rows[i])
 			u.counts.New++
+		case t.Same((*T)(known), &rows[i]):
+			u.counts.Unchanged++
 		default:
-			if fix != nil {
-				if err := fix(known, row); err != nil {
-					u.check.Add(at+"/tag", "%s", err.Error())
-					continue
-				}
-			}
-			if t.Same((*T)(known), &rows[i]) {
-				u.counts.Unchanged++
-				continue
-			}
 			changed = append(changed, &rows[i])
 			u.counts.Changed++
-		}
-	}
-	u.writes = append(u.writes, func(ctx context.Context) error {
-		if len(made) > 0 {
-			if err := t.Copy(ctx, u.Scope, len(made), func(i int) *T { return made[i] }); err != nil {
-				return err
+			switch was := any(known).(type) {
+			case *Feed:
+				u.far = append(u.far, far(was)...)
+			case *ControlLink:
+				u.far = append(u.far, far(was)...)
 			}
 		}
-		return t.UpdateAll(ctx, u.Scope, changed)
-	})
+	}
+	plan[T, P](u, t, made, changed)
 	return nil
+}
+
+// nameField is where a record has its own name in the building; a feed and a control have none, and may be told twice
+// under two identifiers.
+var nameField = map[string]string{"space": "/name", "make_up": "/name", "circuit": "/way", "place": "/tag"}
+
+// nameFree tells of a row whose name another row of the request has, or a stored record (nil: none) that the request
+// leaves alone. It returns false where it told.
+func (u *upsert) nameFree(table, at, name string, given bool, h, holder *domain.Row, asked map[domain.ID]bool) bool {
+	field, own := nameField[table]
+	if given && !own {
+		return true
+	}
+	key := table + "\x00" + name
+	if other, twice := u.names[key]; twice {
+		u.check.Add(at+field, "is the same as that of %s", other)
+		return false
+	}
+	u.names[key] = at
+	if own && holder != nil && holder.ID != h.ID && !asked[holder.ID] {
+		u.taken.Add(at+field, "already belongs to another record of this building")
+		return false
+	}
+	return true
+}
+
+// plan notes what is to be written of the rows of one list.
+func plan[T any, P headed[T]](u *upsert, t *domain.Table[T], made, changed []*T) {
+	store := func(ctx context.Context, rows []int) error {
+		return t.Copy(ctx, u.Scope, len(rows), func(i int) *T { return made[rows[i]] })
+	}
+	all := func(ctx context.Context) error {
+		return t.Copy(ctx, u.Scope, len(made), func(i int) *T { return made[i] })
+	}
+	switch {
+	case len(made) == 0:
+	case t.Name == "place":
+		p := newPlaces{copy: store}
+		for _, row := range made {
+			p.heads = append(p.heads, any(row).(interface{ Place() *PlaceHead }).Place())
+		}
+		u.places = append(u.places, p)
+	case t.Name == "feed" || t.Name == "control":
+		u.after = append(u.after, all)
+	default:
+		u.before = append(u.before, all)
+	}
+	u.changes = append(u.changes, func(ctx context.Context) error { return t.UpdateAll(ctx, u.Scope, changed) })
+	for _, row := range changed {
+		switch id := P(row).Head().ID; t.Name {
+		case "place":
+			u.corrected = append(u.corrected, id)
+		case "space":
+			u.spaces = append(u.spaces, id)
+		}
+	}
 }
 
 func orEmpty(s []string) []string {
@@ -280,9 +449,15 @@ func (u *upsert) keepTree(known, row any) {
 	u.devices = u.devices || k.sharesDevice()
 }
 
-// reachFar makes sure that every known place and circuit that a row is, or names, is in a locked tree.
+// reachFar makes sure that every known place and circuit that a row is, names, or named before, is in a locked tree, and
+// so is every place in a space that changes.
 func (u *upsert) reachFar(ctx context.Context) error {
-	var ids []domain.ID
+	if len(u.spaces) > 0 {
+		if err := u.reachSpaces(ctx, u.spaces); err != nil {
+			return err
+		}
+	}
+	ids := u.far
 	for _, n := range u.refs.named {
 		switch n.table {
 		case "place", "circuit", "dimmer":

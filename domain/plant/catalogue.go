@@ -104,7 +104,7 @@ func LoadCatalogue(ctx context.Context, db domain.Queryer) (*Catalogue, error) {
 	batch.Queue(`SELECT ` + DriverModels.List("") + ` FROM driver_model`).Query(collect(DriverModels, &drivers))
 	batch.Queue(`SELECT ` + DimmerModels.List("") + ` FROM dimmer_model`).Query(collect(DimmerModels, &dimmers))
 	batch.Queue(`SELECT ` + FixtureModels.List("") + ` FROM fixture_model`).Query(collect(FixtureModels, &fixtures))
-	batch.Queue(`SELECT ` + Pairings.List("") + ` FROM pairing`).Query(collect(Pairings, &pairings))
+	batch.Queue(`SELECT ` + Pairings.List("") + ` FROM pairing ORDER BY id`).Query(collect(Pairings, &pairings))
 	batch.Queue(`SELECT ` + site.SpaceUses.List("") + ` FROM space_use`).Query(collect(site.SpaceUses, &uses))
 	if err := db.SendBatch(ctx, &batch).Close(); err != nil {
 		return nil, domain.Classify(err, "catalogue")
@@ -169,6 +169,9 @@ func CreateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 		h.ID = domain.NewID()
 	}
 	h.Version, h.CreatedAt, h.UpdatedAt, h.RetiredAt = 1, s.At, s.At, nil
+	if m, ok := any(row).(interface{ Head() *ModelHead }); ok && m.Head().MergedInto != nil {
+		return mergedOnlyByMerging(t.What)
+	}
 	if err := valid(ctx, s, t.What, row); err != nil {
 		return err
 	}
@@ -234,8 +237,7 @@ func UpdateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 			return domain.Conflictf("the %s was merged into another one; change that one", t.What)
 		}
 		if m.Head().MergedInto != nil {
-			return &domain.Error{Kind: domain.Invalid, Msg: "the " + t.What + " is not valid",
-				Fields: []domain.Field{{Pointer: "/merged_into", Detail: "is set by merging: leave it out"}}}
+			return mergedOnlyByMerging(t.What)
 		}
 		m.Head().Provisional = old.Provisional
 	}
@@ -247,6 +249,11 @@ func UpdateModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 	}
 	event.Record(s, event.Act{Action: kind + ".changed", Kind: kind, ID: h.ID, Body: event.Changed(&before, row)})
 	return raise(ctx, s, kind, P(&before), row)
+}
+
+func mergedOnlyByMerging(what string) error {
+	return &domain.Error{Kind: domain.Invalid, Msg: "the " + what + " is not valid",
+		Fields: []domain.Field{{Pointer: "/merged_into", Detail: "is set by merging: leave it out"}}}
 }
 
 // RetireModel takes a record of the catalogue out of the lists people choose from, or back in where restore is true.
@@ -276,8 +283,11 @@ func RetireModel[T any, P catalogued[T]](ctx context.Context, s domain.Scope, t 
 }
 
 // raise counts a change of the catalogue and asks for the reviews it makes necessary: of what holds the record as it
-// stands now and, where it was changed, as it stood before. A price makes none.
+// stands now and, where it was changed, as it stood before. A price is no part of what is judged: it makes neither.
 func raise(ctx context.Context, s domain.Scope, kind string, rows ...any) error {
+	if _, ok := rows[0].(*Price); ok {
+		return nil
+	}
 	if err := bump(ctx, s); err != nil {
 		return err
 	}
@@ -289,8 +299,6 @@ func raise(ctx context.Context, s domain.Scope, kind string, rows ...any) error 
 	for _, row := range rows {
 		var h holder
 		switch m := row.(type) {
-		case *Price:
-			return nil
 		case *site.SpaceUse:
 			// Its hours are those of every space of that use, in any building.
 			if len(rows) == 2 && sameHours(rows[0].(*site.SpaceUse), rows[1].(*site.SpaceUse)) {
@@ -459,11 +467,44 @@ func Repoint(ctx context.Context, s domain.Scope, kind string, ids []domain.ID, 
 }
 
 // PricesOn returns the price of each model in force on a day: the latest from a date that has come. A model with
-// prices in several currencies has the one whose date is latest, and the first by code where they tie.
+// prices in several currencies has the one whose date is latest, and the first by code where they tie. Models that were
+// merged are one: the latest price of any of them is found under the id of each.
 func PricesOn(ctx context.Context, s domain.Scope, day domain.Date) (map[domain.ID]Price, error) {
+	rows, err := s.Query(ctx, `
+		SELECT id, merged_into FROM lamp_model WHERE merged_into IS NOT NULL
+		 UNION ALL
+		SELECT id, merged_into FROM driver_model WHERE merged_into IS NOT NULL
+		 UNION ALL
+		SELECT id, merged_into FROM dimmer_model WHERE merged_into IS NOT NULL
+		 UNION ALL
+		SELECT id, merged_into FROM fixture_model WHERE merged_into IS NOT NULL`)
+	if err != nil {
+		return nil, domain.Classify(err, "price")
+	}
+	into := map[domain.ID]domain.ID{}
+	var id, target domain.ID
+	if _, err := pgx.ForEachRow(rows, []any{&id, &target}, func() error { into[id] = target; return nil }); err != nil {
+		return nil, domain.Classify(err, "price")
+	}
 	out := map[domain.ID]Price{}
-	err := Prices.Each(ctx, s, func(p *Price) error { out[p.ModelID] = *p; return nil }, `
+	// Of two of one date and currency, the one stated for the model itself stays.
+	err = Prices.Each(ctx, s, func(p *Price) error {
+		model := p.ModelID
+		if t, merged := into[model]; merged {
+			if have, ok := out[t]; ok && have.FromDate == p.FromDate && have.Currency == p.Currency && have.ModelID == t {
+				return nil
+			}
+			model = t
+		}
+		out[model] = *p
+		return nil
+	}, `
 		WHERE from_date <= $1 AND retired_at IS NULL
-		ORDER BY from_date, currency DESC`, day)
+		ORDER BY from_date, currency DESC, id`, day)
+	for from, t := range into {
+		if p, ok := out[t]; ok {
+			out[from] = p
+		}
+	}
 	return out, err
 }

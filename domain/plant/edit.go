@@ -128,7 +128,7 @@ func insert[T any, P headed[T]](ctx context.Context, e *Edit, t *domain.Table[T]
 	if err := row.Validate(); err != nil {
 		return err
 	}
-	if err := checkReferences(ctx, e.Scope, t.What, row); err != nil {
+	if err := checkReferences(ctx, e.Scope, t.What, row, nil); err != nil {
 		return err
 	}
 	if err := t.Insert(ctx, e.Scope, (*T)(row)); err != nil {
@@ -139,7 +139,7 @@ func insert[T any, P headed[T]](ctx context.Context, e *Edit, t *domain.Table[T]
 }
 
 // update stores a changed record if the stored version is still its own, and returns the record as it was. fix, if
-// not nil, settles what a client does not send.
+// not nil, settles what a client does not send before the record is checked.
 func update[T any, P headed[T]](ctx context.Context, e *Edit, t *domain.Table[T], row P, kind string, fix func(before P) error) (P, error) {
 	h := row.Head()
 	old, err := t.Lock(ctx, e.Scope, h.ID)
@@ -152,16 +152,16 @@ func update[T any, P headed[T]](ctx context.Context, e *Edit, t *domain.Table[T]
 	if was.RetiredAt != nil {
 		return nil, domain.Conflictf("the %s is retired; restore it first", t.What)
 	}
-	if err := row.Validate(); err != nil {
-		return nil, err
-	}
-	if err := checkReferences(ctx, e.Scope, t.What, row); err != nil {
-		return nil, err
-	}
 	if fix != nil {
 		if err := fix(before); err != nil {
 			return nil, err
 		}
+	}
+	if err := row.Validate(); err != nil {
+		return nil, err
+	}
+	if err := checkReferences(ctx, e.Scope, t.What, row, before); err != nil {
+		return nil, err
 	}
 	if err := t.Update(ctx, e.Scope, (*T)(row)); err != nil {
 		return nil, err
@@ -202,7 +202,7 @@ func (e *Edit) CreateSpace(ctx context.Context, p *site.Space) error {
 
 // UpdateSpace stores a changed space; the trees of its places are computed again.
 func (e *Edit) UpdateSpace(ctx context.Context, p *site.Space) error {
-	if err := e.reachSpace(ctx, p.ID); err != nil {
+	if err := e.reachSpaces(ctx, []domain.ID{p.ID}); err != nil {
 		return err
 	}
 	_, err := update(ctx, e, site.Spaces, p, "space", nil)
@@ -223,8 +223,10 @@ func (e *Edit) RestoreSpace(ctx context.Context, id domain.ID, version int64) (s
 	return retire[site.Space](ctx, e, site.Spaces, id, version, nil, "space", nil)
 }
 
-func (e *Edit) reachSpace(ctx context.Context, id domain.ID) error {
-	rows, err := e.Query(ctx, `SELECT DISTINCT tree_id FROM place WHERE building_id = $1 AND space_id = $2 AND retired_at IS NULL`, e.Building, id)
+// reachSpaces makes sure that the trees of the places in some spaces are locked. It fails with a Grow where some are not.
+func (e *Edit) reachSpaces(ctx context.Context, ids []domain.ID) error {
+	rows, err := e.Query(ctx, `SELECT DISTINCT tree_id FROM place WHERE building_id = $1 AND space_id = ANY($2) AND retired_at IS NULL`,
+		e.Building, domain.IDs(ids))
 	if err != nil {
 		return domain.Classify(err, "space")
 	}

@@ -2,7 +2,10 @@ package plant
 
 import (
 	"context"
+	"errors"
 	"fmt"
+	"slices"
+	"strings"
 
 	"lampward/domain"
 )
@@ -41,20 +44,47 @@ type Put struct {
 // them. Places without a tag of their own get one; their position is in_room until a label is scanned.
 func (e *Edit) PutMakeUp(ctx context.Context, p Put) (Bulk, error) {
 	c := domain.NewCheck("make-up")
-	c.Count("/count", &p.Count, 1, MaxBulk/2)
+	c.Count("/count", &p.Count, 1, MaxBulk/2-1) // each may need gear of its own, and all of them a dimmer
 	if len(p.Tags) > p.Count {
 		c.Add("/tags", "must not be more than count")
 	}
 	if err := c.Err(); err != nil {
 		return Bulk{}, err
 	}
-	m, err := MakeUps.Get(ctx, e.Scope, p.MakeUpID)
+	var r references
+	r.name("/space_id", "space", p.SpaceID)
+	r.name("/circuit_id", "circuit", p.CircuitID)
+	if err := r.check(ctx, e.Scope, c); err != nil {
+		return Bulk{}, err
+	}
+	if err := c.Err(); err != nil {
+		return Bulk{}, err
+	}
+	m, err := e.makeUpInUse(ctx, p.MakeUpID)
 	if err != nil {
 		return Bulk{}, err
 	}
 	b := m.Expand(p)
-	_, err = e.Upsert(ctx, &b)
-	return b, err
+	if _, err := e.Upsert(ctx, &b); err != nil {
+		if bad, ok := errors.AsType[*domain.Error](err); ok {
+			for i, f := range bad.Fields { // luminaire i carries tag i
+				if n, ok := strings.CutPrefix(f.Pointer, "/fixtures/"); ok && strings.HasSuffix(n, "/tag") {
+					bad.Fields[i].Pointer = "/tags/" + strings.TrimSuffix(n, "/tag")
+				}
+			}
+		}
+		return Bulk{}, err
+	}
+	return b, nil
+}
+
+// makeUpInUse returns a make-up that is not retired.
+func (e *Edit) makeUpInUse(ctx context.Context, id domain.ID) (MakeUp, error) {
+	m, err := MakeUps.Get(ctx, e.Scope, id)
+	if err == nil && m.RetiredAt != nil {
+		err = domain.Conflictf("the make-up is retired; restore it first")
+	}
+	return m, err
 }
 
 // Expand returns the records that putting m makes, with their ids and tags.
@@ -106,7 +136,7 @@ func (m *MakeUp) Expand(p Put) Bulk {
 
 // ApplyMakeUp gives places that a make-up was put in what it says now: all of them, or those named.
 func (e *Edit) ApplyMakeUp(ctx context.Context, id domain.ID, places []domain.ID) (int, error) {
-	m, err := MakeUps.Get(ctx, e.Scope, id)
+	m, err := e.makeUpInUse(ctx, id)
 	if err != nil {
 		return 0, err
 	}
@@ -114,7 +144,6 @@ func (e *Edit) ApplyMakeUp(ctx context.Context, id domain.ID, places []domain.ID
 	if places != nil {
 		rest, args = rest+` AND id = ANY($3)`, append(args, domain.IDs(places))
 	}
-	var ids []domain.ID
 	fixtures, err := Fixtures.Select(ctx, e.Scope, rest+` AND kind = 'fixture' ORDER BY id`, args...)
 	if err != nil {
 		return 0, err
@@ -123,14 +152,23 @@ func (e *Edit) ApplyMakeUp(ctx context.Context, id domain.ID, places []domain.ID
 	if err != nil {
 		return 0, err
 	}
-	for i := range fixtures {
-		ids = append(ids, fixtures[i].ID)
+	dimmers, err := Dimmers.Select(ctx, e.Scope, rest+` AND kind = 'dimmer' ORDER BY id`, args...)
+	if err != nil {
+		return 0, err
 	}
-	for i := range drivers {
-		ids = append(ids, drivers[i].ID)
+	var ids []domain.ID
+	put := map[domain.ID]bool{}
+	for _, h := range slices.Concat(heads[Fixture](fixtures), heads[Driver](drivers), heads[Dimmer](dimmers)) {
+		ids, put[h.ID] = append(ids, h.ID), true
 	}
-	if places != nil && len(ids) < len(places) {
-		return 0, domain.Invalidf("%d of the places named were not put with this make-up", len(places)-len(ids))
+	c := domain.NewCheck("request")
+	for i, id := range places {
+		if !put[id] {
+			c.Add(fmt.Sprintf("/place_ids/%d", i), "names no place in use that was put with this make-up")
+		}
+	}
+	if err := c.Err(); err != nil {
+		return 0, err
 	}
 	if _, err := e.reach(ctx, ids, nil); err != nil {
 		return 0, err
@@ -153,6 +191,25 @@ func (e *Edit) ApplyMakeUp(ctx context.Context, id domain.ID, places []domain.ID
 			return 0, err
 		}
 	}
+	for i := range dimmers {
+		d := &dimmers[i]
+		d.DimmerModelID, d.UpdatedAt = m.DimmerModelID, e.At
+		if err := Dimmers.Update(ctx, e.Scope, d); err != nil {
+			return 0, err
+		}
+	}
+	if err := e.correctUnits(ctx, ids); err != nil {
+		return 0, err
+	}
 	e.record("make_up.applied", "make_up", id, map[string]any{"places": fmt.Sprint(len(ids))})
 	return len(ids), nil
+}
+
+// heads returns what some places have in common.
+func heads[T any, P placed[T]](rows []T) []*PlaceHead {
+	out := make([]*PlaceHead, len(rows))
+	for i := range rows {
+		out[i] = P(&rows[i]).Place()
+	}
+	return out
 }

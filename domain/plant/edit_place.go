@@ -5,6 +5,8 @@ import (
 	"fmt"
 	"time"
 
+	"github.com/jackc/pgx/v5"
+
 	"lampward/domain"
 )
 
@@ -169,17 +171,42 @@ func retirePlace[T any, P placed[T]](ctx context.Context, e *Edit, t *domain.Tab
 		return none, domain.NotFoundf("there is no such %s", kind)
 	}
 	if at == nil {
-		// What fed it may be in another tree by now, or gone.
-		places, circuits := P(&row).Place().feeds()
-		trees, err := e.reach(ctx, places, circuits)
-		if err != nil {
-			return none, err
-		}
-		if err := P(&row).Place().missing(trees); err != nil {
+		if err := e.reachBack(ctx, P(&row).Place()); err != nil {
 			return none, err
 		}
 	}
 	return retire(ctx, e, t, id, version, at, kind, func(row P) { row.Place().TreeID = id })
+}
+
+// reachBack makes sure that the trees a place returns to are locked: of what feeds it and of what acts on it, which may
+// be in other trees by now. It fails with Invalid where what feeds it, or its space, is out of use.
+func (e *Edit) reachBack(ctx context.Context, h *PlaceHead) error {
+	var r references
+	r.name("/space_id", "space", h.SpaceID)
+	c := domain.NewCheck("place")
+	if err := r.check(ctx, e.Scope, c); err != nil {
+		return err
+	}
+	if err := c.Err(); err != nil {
+		return err
+	}
+	places, circuits := h.feeds()
+	rows, err := e.Query(ctx, `
+		SELECT coalesce(from_place_id, from_circuit_id) FROM feed WHERE building_id = $1 AND place_id = $2 AND retired_at IS NULL
+		 UNION ALL
+		SELECT dimmer_id FROM control WHERE building_id = $1 AND place_id = $2 AND retired_at IS NULL`, e.Building, h.ID)
+	if err != nil {
+		return domain.Classify(err, "place")
+	}
+	far, err := pgx.CollectRows(rows, pgx.RowTo[domain.ID])
+	if err != nil {
+		return domain.Classify(err, "place")
+	}
+	trees, err := e.reach(ctx, append(places, far...), append(circuits, far...))
+	if err != nil {
+		return err
+	}
+	return h.missing(trees)
 }
 
 // CreateDimmer stores a new place of a dimmer or switch.
@@ -189,7 +216,14 @@ func (e *Edit) CreateDimmer(ctx context.Context, d *Dimmer) error {
 
 // UpdateDimmer stores a changed dimmer.
 func (e *Edit) UpdateDimmer(ctx context.Context, d *Dimmer) error {
-	return updatePlace(ctx, e, Dimmers, d, KindDimmer, nil)
+	corrected := false
+	if err := updatePlace(ctx, e, Dimmers, d, KindDimmer, func(before *Dimmer) error {
+		corrected = !same(before.DimmerModelID, d.DimmerModelID)
+		return nil
+	}); err != nil || !corrected {
+		return err
+	}
+	return e.correctUnits(ctx, []domain.ID{d.ID})
 }
 
 // RetireDimmer takes a dimmer out of use. It fails with Conflict while it controls something.
@@ -209,7 +243,14 @@ func (e *Edit) CreateDriver(ctx context.Context, d *Driver) error {
 
 // UpdateDriver stores changed control gear.
 func (e *Edit) UpdateDriver(ctx context.Context, d *Driver) error {
-	return updatePlace(ctx, e, Drivers, d, KindDriver, nil)
+	corrected := false
+	if err := updatePlace(ctx, e, Drivers, d, KindDriver, func(before *Driver) error {
+		corrected = !same(before.DriverModelID, d.DriverModelID)
+		return nil
+	}); err != nil || !corrected {
+		return err
+	}
+	return e.correctUnits(ctx, []domain.ID{d.ID})
 }
 
 // RetireDriver takes control gear out of use. It fails with Conflict while it feeds something.
@@ -230,17 +271,47 @@ func (e *Edit) CreateFixture(ctx context.Context, f *Fixture) error {
 // UpdateFixture stores a corrected luminaire. Another lamp model here corrects the record; a lamp that was changed is
 // told with Fit.
 func (e *Edit) UpdateFixture(ctx context.Context, f *Fixture) error {
-	return updatePlace(ctx, e, Fixtures, f, KindFixture, func(before *Fixture) error {
-		if same(before.LampModelID, f.LampModelID) {
-			return nil
-		}
-		_, err := e.Exec(ctx, `
-			UPDATE unit
-			   SET odd = (lamp_model_id IS DISTINCT FROM $3), version = version + 1, updated_at = $4
-			 WHERE building_id = $1 AND place_id = $2 AND part = 'lamp' AND removed_at IS NULL AND retired_at IS NULL`,
-			e.Building, f.ID, f.LampModelID, e.At)
+	corrected := false
+	if err := updatePlace(ctx, e, Fixtures, f, KindFixture, func(before *Fixture) error {
+		corrected = !same(before.LampModelID, f.LampModelID) || !same(before.DriverModelID, f.DriverModelID) || !same(before.FixtureModelID, f.FixtureModelID)
+		return nil
+	}); err != nil || !corrected {
+		return err
+	}
+	return e.correctUnits(ctx, []domain.ID{f.ID})
+}
+
+// correctUnits follows a correction of places: the units that stand there are of the models the places now name. Lamps
+// that were told to differ from the rest keep their own.
+func (e *Edit) correctUnits(ctx context.Context, places []domain.ID) error {
+	if len(places) == 0 {
+		return nil
+	}
+	if _, err := e.Exec(ctx, `
+		UPDATE unit u
+		   SET lamp_model_id = CASE u.part WHEN 'lamp' THEN p.lamp_model_id END,
+		       driver_model_id = CASE u.part WHEN 'driver' THEN p.driver_model_id END,
+		       dimmer_model_id = CASE u.part WHEN 'dimmer' THEN p.dimmer_model_id END,
+		       fixture_model_id = CASE u.part WHEN 'fixture' THEN p.fixture_model_id END,
+		       version = u.version + 1, updated_at = $3
+		  FROM place p
+		 WHERE u.building_id = $1 AND p.building_id = $1 AND p.id = u.place_id AND u.place_id = ANY($2)
+		   AND u.removed_at IS NULL AND u.retired_at IS NULL AND NOT u.odd
+		   AND (u.part = 'lamp' AND u.lamp_model_id IS DISTINCT FROM p.lamp_model_id
+		     OR u.part = 'driver' AND u.driver_model_id IS DISTINCT FROM p.driver_model_id
+		     OR u.part = 'dimmer' AND u.dimmer_model_id IS DISTINCT FROM p.dimmer_model_id
+		     OR u.part = 'fixture' AND u.fixture_model_id IS DISTINCT FROM p.fixture_model_id)`,
+		e.Building, domain.IDs(places), e.At); err != nil {
 		return domain.Classify(err, "unit")
-	})
+	}
+	_, err := e.Exec(ctx, `
+		UPDATE unit u
+		   SET odd = (u.lamp_model_id IS DISTINCT FROM p.lamp_model_id), version = u.version + 1, updated_at = $3
+		  FROM place p
+		 WHERE u.building_id = $1 AND p.building_id = $1 AND p.id = u.place_id AND u.place_id = ANY($2)
+		   AND u.removed_at IS NULL AND u.retired_at IS NULL AND u.part = 'lamp'
+		   AND u.odd <> (u.lamp_model_id IS DISTINCT FROM p.lamp_model_id)`, e.Building, domain.IDs(places), e.At)
+	return domain.Classify(err, "unit")
 }
 
 // RetireFixture takes a luminaire out of use. It fails with Conflict while it holds a unit.
@@ -277,7 +348,7 @@ func (e *Edit) UpdateFeed(ctx context.Context, f *Feed) error {
 	if err := f.Validate(); err != nil {
 		return err
 	}
-	if err := e.reachFeed(ctx, &before); err != nil {
+	if err := e.reachStored(ctx, &before); err != nil {
 		return err
 	}
 	if err := e.reachFeed(ctx, f); err != nil {
@@ -302,7 +373,12 @@ func (e *Edit) setFeed(ctx context.Context, id domain.ID, version int64, at *tim
 	if err != nil {
 		return f, err
 	}
-	if err := e.reachFeed(ctx, &f); err != nil {
+	if at == nil {
+		err = e.reachFeed(ctx, &f)
+	} else {
+		err = e.reachStored(ctx, &f)
+	}
+	if err != nil {
 		return f, err
 	}
 	return retire[Feed](ctx, e, Feeds, id, version, at, "feed", nil)
@@ -311,6 +387,26 @@ func (e *Edit) setFeed(ctx context.Context, id domain.ID, version int64, at *tim
 func (e *Edit) reachFeed(ctx context.Context, f *Feed) error {
 	return e.reachAll(ctx, "feed", map[string]*domain.ID{"/place_id": &f.PlaceID, "/from_place_id": f.FromPlaceID},
 		map[string]*domain.ID{"/from_circuit_id": f.FromCircuitID})
+}
+
+// reachStored is reach for all that a stored record names; what is out of use by now has no tree.
+func (e *Edit) reachStored(ctx context.Context, row refers) error {
+	ids := far(row)
+	_, err := e.reach(ctx, ids, ids)
+	return err
+}
+
+// far returns the places and circuits that a record names.
+func far(row refers) (ids []domain.ID) {
+	var r references
+	row.refer(&r, "")
+	for _, n := range r.named {
+		switch n.table {
+		case "place", "circuit", "dimmer":
+			ids = append(ids, n.id)
+		}
+	}
+	return ids
 }
 
 // reachAll is reach for fields that a record names; it fails with Invalid for one that names nothing.
@@ -370,7 +466,7 @@ func (e *Edit) UpdateControl(ctx context.Context, l *ControlLink) error {
 	if err := l.Validate(); err != nil {
 		return err
 	}
-	if err := e.reachControl(ctx, &before); err != nil {
+	if err := e.reachStored(ctx, &before); err != nil {
 		return err
 	}
 	if err := e.reachControl(ctx, l); err != nil {
@@ -395,7 +491,12 @@ func (e *Edit) setControl(ctx context.Context, id domain.ID, version int64, at *
 	if err != nil {
 		return l, err
 	}
-	if err := e.reachControl(ctx, &l); err != nil {
+	if at == nil {
+		err = e.reachControl(ctx, &l)
+	} else {
+		err = e.reachStored(ctx, &l)
+	}
+	if err != nil {
 		return l, err
 	}
 	return retire[ControlLink](ctx, e, Controls, id, version, at, "control", nil)

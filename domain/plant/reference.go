@@ -14,6 +14,7 @@ import (
 type references struct {
 	named []reference
 	known map[string]map[domain.ID]bool // made in the same request
+	kept  map[reference]bool            // named by the stored record already
 }
 
 type reference struct {
@@ -39,6 +40,23 @@ func (r *references) made(table string, id domain.ID) {
 	r.known[table][id] = true
 }
 
+// keep tells that the stored record at a pointer names what it names: leaving that as it is asks nothing, even where
+// it went out of use meanwhile, as a make-up may whose places stay.
+func (r *references) keep(stored any, at string) {
+	row, ok := stored.(refers)
+	if !ok {
+		return
+	}
+	var was references
+	row.refer(&was, at)
+	if r.kept == nil {
+		r.kept = map[reference]bool{}
+	}
+	for _, n := range was.named {
+		r.kept[n] = true
+	}
+}
+
 // referenceSQL finds which of some identifiers exist; building tables are asked with the building.
 var referenceSQL = map[string]string{
 	"space":         `SELECT id FROM space WHERE building_id = $1 AND id = ANY($2) AND retired_at IS NULL`,
@@ -56,7 +74,7 @@ var referenceSQL = map[string]string{
 func (r *references) check(ctx context.Context, s domain.Scope, c *domain.Check) error {
 	ask := map[string]map[domain.ID]bool{}
 	for _, n := range r.named {
-		if r.known[n.table][n.id] {
+		if r.known[n.table][n.id] || r.kept[n] {
 			continue
 		}
 		if ask[n.table] == nil {
@@ -89,7 +107,7 @@ func (r *references) check(ctx context.Context, s domain.Scope, c *domain.Check)
 		}
 	}
 	for _, n := range r.named {
-		if !r.known[n.table][n.id] && !found[n.table][n.id] {
+		if !r.known[n.table][n.id] && !r.kept[n] && !found[n.table][n.id] {
 			c.Add(n.pointer, "names no %s that is in use here", words[n.table])
 		}
 	}
@@ -142,6 +160,8 @@ func (l *ControlLink) refer(r *references, at string) {
 	r.name(at+"/circuit_id", "circuit", l.CircuitID)
 }
 
+func (f *Failure) refer(r *references, at string) { r.name(at+"/make_up_id", "make_up", f.MakeUpID) }
+
 func (m *MakeUp) refer(r *references, at string) {
 	r.name(at+"/fixture_model_id", "fixture_model", m.FixtureModelID)
 	r.name(at+"/lamp_model_id", "lamp_model", m.LampModelID)
@@ -149,14 +169,16 @@ func (m *MakeUp) refer(r *references, at string) {
 	r.name(at+"/dimmer_model_id", "dimmer_model", m.DimmerModelID)
 }
 
-// checkReferences fails with Invalid where a record names something that does not exist.
-func checkReferences(ctx context.Context, s domain.Scope, what string, row any) error {
+// checkReferences fails with Invalid where a record names something that does not exist or is out of use, unless the
+// record as it was before (nil: none) names it too.
+func checkReferences(ctx context.Context, s domain.Scope, what string, row, before any) error {
 	named, ok := row.(refers)
 	if !ok {
 		return nil
 	}
 	var r references
 	named.refer(&r, "")
+	r.keep(before, "")
 	c := domain.NewCheck(what)
 	if err := r.check(ctx, s, c); err != nil {
 		return err

@@ -400,6 +400,12 @@ func (m *MakeUp) Validate() error {
 	c.Range("/cable_m", m.CableM, 0, 1000, "m")
 	c.Range("/cable_mm2", m.CableMM2, 0.1, 100, "mm2")
 	c.OneOf("/cable_class", m.CableClass, "1", "2", "5", "6")
+	if m.DriverModelID != nil && m.Gear == "none" {
+		c.Add("/driver_model_id", "must be absent where gear is none")
+	}
+	if m.FixturesPerDriver != nil && m.Gear != "" && m.Gear != "remote" {
+		c.Add("/fixtures_per_driver", "belongs to a make-up whose gear is remote")
+	}
 	c.Source("/fact_source", m.FactSource)
 	c.Text("/note", m.Note)
 	return c.Err()
