@@ -262,3 +262,30 @@ func BenchmarkFit(b *testing.B) {
 		}
 	}
 }
+
+// TestPublishedCurve: the 21 patients on 6-mercaptopurine of Freireich et al. (Blood 21, 1963, 699), whose curve and
+// standard errors textbooks print to three and four places (Klein and Moeschberger 1997, section 4.2; from memory).
+func TestPublishedCurve(t *testing.T) {
+	t.Parallel()
+	var lives []Life
+	for _, x := range []float64{6, 6, 6, 7, 10, 13, 16, 22, 23} {
+		lives = append(lives, Failed(x))
+	}
+	for _, x := range []float64{6, 9, 10, 11, 17, 19, 20, 25, 32, 32, 34, 35} {
+		lives = append(lives, Working(x))
+	}
+	c, err := ProductLimit(lives, true)
+	if err != nil || len(c.Steps) != 7 {
+		t.Fatalf("%+v, %v", c, err)
+	}
+	for i, want := range []struct{ at, risk, survival, se float64 }{{6, 21, 0.857, 0.0764}, {7, 17, 0.807, 0.0869}, {10, 15, 0.753, 0.0963},
+		{13, 12, 0.690, 0.1068}, {16, 11, 0.627, 0.1141}, {22, 7, 0.538, 0.1282}, {23, 6, 0.448, 0.1346}} {
+		s := c.Steps[i]
+		if s.Time != want.at || s.AtRisk != want.risk || math.Abs(s.Survival-want.survival) > 5e-4 || math.Abs(s.SE-want.se) > 5e-5 {
+			t.Errorf("%+v, not %+v", s, want)
+		}
+	}
+	if m := c.Quantile(0.5); m == nil || *m != 23 {
+		t.Errorf("median %v, not 23 weeks", m)
+	}
+}

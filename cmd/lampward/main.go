@@ -23,6 +23,7 @@ type commands struct {
 	Migrate  migrateCommand  `cmd:"" help:"Bring the schema of the database up to date, or take it back."`
 	FitCheck fitCheckCommand `cmd:"" name:"fit-check" help:"May I fit this here? From what can be seen on a ladder; needs no database."`
 	Check    checkCommand    `cmd:"" help:"Judge a file of records; needs no database."`
+	Fit      fitCommand      `cmd:"" help:"Fit lives to a CSV file: the check of a statistician; needs no database."`
 	Import   importCommand   `cmd:"" help:"Store a file of records."`
 	Export   exportCommand   `cmd:"" help:"Write a building as the survey workbook, or an empty one."`
 	Key      keyCommand      `cmd:"" help:"Make, list and withdraw API keys."`
