@@ -305,13 +305,13 @@ func TestReportRefused(t *testing.T) {
 		spoil func(*plant.Failure)
 		field string
 	}{
-		"no place":                  {func(f *plant.Failure) { f.PlaceID = nil }, ""},
-		"a make-up that is not":     {func(f *plant.Failure) { f.PlaceID, f.MakeUpID = nil, of(domain.NewID()) }, "/make_up_id"},
-		"a part of another place":   {func(f *plant.Failure) { f.PlaceID = &l.d.ID }, "/part"},
-		"a mode that is none":       {func(f *plant.Failure) { f.Mode = "broken" }, "/mode"},
-		"tomorrow":                  {func(f *plant.Failure) { f.NoticedAt = domaintest.Noon.AddDate(0, 0, 1) }, "/noticed_at"},
-		"good after bad":            {func(f *plant.Failure) { f.LastGoodAt = of(domaintest.Noon.Add(time.Minute)) }, "/last_good_at"},
-		"a note that turns":         {func(f *plant.Failure) { f.Note = "a\u202eb" }, "/note"},
+		"no place":                {func(f *plant.Failure) { f.PlaceID = nil }, ""},
+		"a make-up that is not":   {func(f *plant.Failure) { f.PlaceID, f.MakeUpID = nil, of(domain.NewID()) }, "/make_up_id"},
+		"a part of another place": {func(f *plant.Failure) { f.PlaceID = &l.d.ID }, "/part"},
+		"a mode that is none":     {func(f *plant.Failure) { f.Mode = "broken" }, "/mode"},
+		"tomorrow":                {func(f *plant.Failure) { f.NoticedAt = domaintest.Noon.AddDate(0, 0, 1) }, "/noticed_at"},
+		"good after bad":          {func(f *plant.Failure) { f.LastGoodAt = of(domaintest.Noon.Add(time.Minute)) }, "/last_good_at"},
+		"a note that turns":       {func(f *plant.Failure) { f.Note = "a\u202eb" }, "/note"},
 	} {
 		f := good
 		c.spoil(&f)
