@@ -64,7 +64,7 @@ func newDocsPage() docsPage {
 	}
 	// On a phone a wide table scrolls by itself, not the page.
 	html := bytes.Replace(w.b.Bytes(), []byte("</head>"),
-		[]byte("<style>.markdown table{display:block;overflow-x:auto}.markdown td,.markdown th{padding-right:1em!important}</style></head>"), 1)
+		[]byte("<style>.info table{display:block;overflow-x:auto}.info td,.info th{padding-right:1em!important}</style></head>"), 1)
 	return docsPage{html: html, policy: policy, assets: h}
 }
 
